@@ -1,0 +1,1 @@
+"""Verdicts with reasons from numbers and signals; nothing is changed here."""

@@ -1,0 +1,117 @@
+"""The card of a check, and the one place where a number meets a limit.
+
+Verdicts follow the scheme of the open QARTOD manuals (pass, suspect, fail, not evaluated). A measure that raises or gives NaN
+is *not evaluated*, never a pass: every comparison with NaN is false, so a naive test would let missing data through.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass, fields, replace
+from enum import StrEnum
+from typing import Any
+
+import numpy as np
+
+from metrics.arrays import BoolArray, FloatArray
+
+
+class Verdict(StrEnum):
+    """What a check says of one subject."""
+
+    PASS = "pass"  # noqa: S105  (a verdict, not a password)
+    SUSPECT = "suspect"
+    FAIL = "fail"
+    NOT_EVALUATED = "not evaluated"
+
+
+class Level(StrEnum):
+    """What a check looks at."""
+
+    ACQUISITION = "acquisition"
+    RUN = "run"
+    BEAT = "beat"
+
+
+@dataclass(frozen=True, slots=True)
+class Limits:
+    """Bounds of one check; None means that bound does not exist. ``basis`` says where the numbers come from."""
+
+    suspect_above: float | None = None
+    fail_above: float | None = None
+    suspect_below: float | None = None
+    fail_below: float | None = None
+    basis: str = "house default"
+
+    def declared(self) -> tuple[str, ...]:
+        """Return the names of the bounds this check uses: what a protocol may replace."""
+        return tuple(f.name for f in fields(self) if f.name != "basis" and getattr(self, f.name) is not None)
+
+    def replaced(self, **bounds: float) -> Limits:
+        """Return these limits with some bounds replaced.
+
+        Raises ValueError for a bound the check does not declare.
+        """
+        unknown = set(bounds) - set(self.declared())
+        if unknown:
+            message = f"bounds not declared by this check: {', '.join(sorted(unknown))}"
+            raise ValueError(message)
+        return replace(self, basis="study protocol", **bounds)
+
+
+@dataclass(frozen=True, slots=True)
+class Measured:
+    """What a measure found: a value per subject, where it stands in time, and whether a second sign bears a fail out.
+
+    ``value`` has shape () for an acquisition or run, (n_beats,) for beats; NaN where nothing can be said.
+    ``at_s`` has the same shape (seconds from the run's first sample) or is None. Where ``corroborated`` is False a value beyond the
+    fail bound is only suspect.
+    """
+
+    value: FloatArray
+    at_s: FloatArray | None = None
+    corroborated: BoolArray | None = None
+
+
+@dataclass(frozen=True)
+class Check:
+    """One check: a measure plus declared limits; it holds no comparison and no message logic of its own.
+
+    ``reason`` is a sentence with ``{value}`` and ``{limit}``; ``spoils`` names the indices a fail on run or acquisition level reaches;
+    ``makes_unusable`` says that a failed run is unusable as a whole; ``remedy`` is what the site can do about it.
+    """
+
+    name: str
+    level: Level
+    measure: Callable[[Any], Measured]
+    unit: str
+    limits: Limits
+    reason: str
+    title: str
+    remedy: str = ""
+    limits_rv: Limits | None = None
+    spoils: frozenset[str] = frozenset()
+    makes_unusable: bool = False
+    corrected: bool = False
+    is_fact: bool = False
+    run_kinds: tuple[str, ...] = ("steady", "preload-reduction")
+    after_beats: bool = False
+    required: bool = False
+    revision: int = 1
+    doc: str = ""
+
+    def limits_for(self, chamber: str) -> Limits:
+        """Return the default limits for a chamber (LV or RV)."""
+        return self.limits_rv if chamber == "RV" and self.limits_rv is not None else self.limits
+
+
+@dataclass(frozen=True, slots=True)
+class Judged:
+    """Verdicts of one check on its subjects: arrays of shape (n,), n = 1 above beat level. ``limit`` is the bound crossed, else NaN."""
+
+    check: Check
+    value: FloatArray
+    verdict: Sequence[Verdict]
+    limit: FloatArray
+    at_s: FloatArray
+    trouble: str | None = None

@@ -1,0 +1,1 @@
+"""Coupling indices: one file an index, or a family that shares one fit."""

@@ -1,0 +1,1 @@
+"""Raw channels to beats."""

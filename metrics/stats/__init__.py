@@ -1,0 +1,1 @@
+"""Regressions with two noisy axes, medians and their intervals."""
