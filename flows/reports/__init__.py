@@ -1,0 +1,1 @@
+"""Pages of a night and of each acquisition, drawn from plain data; they need no server, no network and no script."""
