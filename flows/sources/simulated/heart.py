@@ -1,0 +1,94 @@
+"""Ventricles by their parameters, and the published physics that turns volume and activation into pressure.
+
+Pressure is ``e Ees (V - V0) + (1 - e) EDPVR(V)`` with the activation ``e`` between 0 and 1: the time-varying elastance of Suga and
+Sagawa 1974 (Circ Res 35:117, from memory), made so that at e = 1 the end-systolic relation is the straight line ``Ees (V - V0)``.
+The passive curve ``A (exp(B (V - V0)) - 1)`` and the parameter values are house choices that keep each heart inside the ranges
+published for its kind.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+
+@dataclass(frozen=True, slots=True)
+class Heart:
+    """One ventricle, what fills it and what it ejects into.
+
+    Resistances in mmHg s/mL, inertances in mmHg s2/mL, compliance in mL/mmHg. ``activation_scale`` multiplies the published time
+    scale of activation; ``atrial_kick_mmhg`` is what the atrium adds to the filling pressure before a beat; contraction begins
+    ``electromechanical_delay_s`` after the R wave.
+    """
+
+    name: str
+    chamber: str
+    heart_rate_per_min: float
+    ees_mmhg_per_ml: float
+    v0_ml: float
+    filling_pressure_mmhg: float
+    peripheral_resistance: float
+    compliance_ml_per_mmhg: float
+    passive_pressure_mmhg: float = 1.0
+    passive_exponent_per_ml: float = 0.02
+    activation_scale: float = 0.85
+    relaxation_exponent: float = 16.0
+    filling_resistance: float = 0.025
+    filling_inertance: float = 0.0004
+    atrial_kick_mmhg: float = 5.0
+    outflow_resistance: float = 0.008
+    outflow_inertance: float = 0.0005
+    characteristic_resistance: float = 0.05
+    downstream_pressure_mmhg: float = 4.0
+    electromechanical_delay_s: float = 0.04
+
+    @property
+    def rr_s(self) -> float:
+        """Return the heart's own cycle length in seconds."""
+        return 60.0 / self.heart_rate_per_min
+
+
+HEARTS = (
+    Heart("normal", "LV", 68.0, 2.4, 8.0, 8.0, 1.20, 1.5),
+    Heart("small", "LV", 76.0, 3.4, 6.0, 8.0, 1.55, 1.1, passive_exponent_per_ml=0.027),
+    Heart("large", "LV", 58.0, 1.7, 12.0, 9.0, 1.00, 1.9, passive_exponent_per_ml=0.0145),
+    Heart("fast", "LV", 98.0, 2.9, 8.0, 9.0, 0.95, 1.4, activation_scale=0.8, passive_exponent_per_ml=0.021),
+    Heart("failing", "LV", 80.0, 1.05, 25.0, 15.0, 1.00, 1.5, passive_exponent_per_ml=0.0165, relaxation_exponent=12.0),
+    Heart("stiff", "LV", 70.0, 3.2, 5.0, 14.0, 1.35, 1.0, passive_exponent_per_ml=0.029, relaxation_exponent=12.0),
+    Heart("high-afterload", "LV", 66.0, 2.8, 8.0, 10.0, 1.75, 1.1),
+    Heart(
+        "right",
+        "RV",
+        72.0,
+        0.55,
+        25.0,
+        6.0,
+        0.13,
+        3.2,
+        passive_exponent_per_ml=0.0125,
+        atrial_kick_mmhg=3.0,
+        characteristic_resistance=0.02,
+        downstream_pressure_mmhg=7.0,
+    ),
+    Heart(
+        "right-loaded",
+        "RV",
+        78.0,
+        0.85,
+        22.0,
+        7.0,
+        0.34,
+        1.5,
+        passive_exponent_per_ml=0.0135,
+        atrial_kick_mmhg=4.0,
+        characteristic_resistance=0.04,
+        downstream_pressure_mmhg=8.0,
+    ),
+)
+
+
+def heart_named(name: str) -> Heart:
+    """Return the heart of that name.
+
+    Raises KeyError for a name that `HEARTS` does not hold.
+    """
+    return {heart.name: heart for heart in HEARTS}[name]
