@@ -8,3 +8,106 @@ from numpy.typing import NDArray
 FloatArray = NDArray[np.float64]
 IntArray = NDArray[np.int64]
 BoolArray = NDArray[np.bool_]
+
+
+def spans(start: IntArray, stop: IntArray) -> tuple[IntArray, IntArray]:
+    """Return (positions, owner): every sample of the half-open spans in order, and which span each belongs to.
+
+    Both have shape (sum of lengths,). Spans may overlap or be empty.
+
+    >>> positions, owner = spans(np.array([2, 7]), np.array([5, 9]))
+    >>> positions.tolist(), owner.tolist()
+    ([2, 3, 4, 7, 8], [0, 0, 0, 1, 1])
+    """
+    length = np.maximum(stop - start, 0)
+    owner = np.repeat(np.arange(length.size), length)
+    offset = np.arange(owner.size) - np.repeat(np.cumsum(length) - length, length)
+    return start[owner] + offset, owner
+
+
+def argmax_within(values: FloatArray, start: IntArray, stop: IntArray) -> IntArray:
+    """Return where ``values`` is largest in each half-open span, the first such sample; shape (n_spans,), -1 for an empty span.
+
+    NaN counts as smaller than anything; a span of NaN alone gives its first sample.
+
+    >>> argmax_within(np.array([0.0, 3.0, 1.0, 5.0, 5.0]), np.array([0, 2, 4]), np.array([3, 5, 4])).tolist()
+    [1, 3, -1]
+    """
+    positions, owner = spans(start, stop)
+    found = np.full(start.size, -1, dtype=np.int64)
+    if positions.size == 0:
+        return found
+    inside = np.nan_to_num(values[positions], nan=-np.inf)
+    filled, first = np.unique(owner, return_index=True)
+    peak = np.full(start.size, -np.inf)
+    peak[filled] = np.maximum.reduceat(inside, first)
+    hits = np.flatnonzero(inside == peak[owner])
+    hit_owner, hit_first = np.unique(owner[hits], return_index=True)
+    found[hit_owner] = positions[hits[hit_first]]
+    return found
+
+
+def argmin_within(values: FloatArray, start: IntArray, stop: IntArray) -> IntArray:
+    """Return where ``values`` is smallest in each half-open span; shape (n_spans,), -1 for an empty span.
+
+    >>> argmin_within(np.array([2.0, 1.0, 4.0]), np.array([0]), np.array([3])).tolist()
+    [1]
+    """
+    return argmax_within(-values, start, stop)
+
+
+def taken(values: FloatArray, at: IntArray) -> FloatArray:
+    """Return ``values[at]``, NaN where ``at`` is -1; shape of ``at``.
+
+    >>> taken(np.array([4.0, 5.0]), np.array([1, -1])).tolist()
+    [5.0, nan]
+    """
+    if values.size == 0:
+        return np.full(at.shape, np.nan)
+    return np.where(at >= 0, values[np.maximum(at, 0)], np.nan)
+
+
+def running_median(values: FloatArray, width: int) -> FloatArray:
+    """Return the median of the ``width`` values around each one (fewer at the edges), NaN left out; shape (n,).
+
+    >>> running_median(np.array([1.0, 9.0, 2.0, 3.0]), 3).tolist()
+    [5.0, 2.0, 3.0, 2.5]
+    """
+    half = width // 2
+    return _window_medians(np.pad(values.astype(np.float64), half, constant_values=np.nan), width)
+
+
+def median_before(values: FloatArray, width: int) -> FloatArray:
+    """Return the median of the ``width`` values before each one (fewer near the beginning, NaN for the first); shape (n,).
+
+    >>> median_before(np.array([1.0, 3.0, 5.0]), 2).tolist()
+    [nan, 1.0, 2.0]
+    """
+    padded = np.concatenate([np.full(width, np.nan), values.astype(np.float64)])
+    return _window_medians(padded, width)[: values.size]
+
+
+def _window_medians(padded: FloatArray, width: int) -> FloatArray:
+    """Return NaN-ignoring medians of every window of ``width``; sorting puts NaN last, so no warning for an empty window."""
+    if padded.size < width:
+        return np.empty(0)
+    windows = np.sort(np.lib.stride_tricks.sliding_window_view(padded, width), axis=1)
+    count = np.sum(np.isfinite(windows), axis=1)
+    rows = np.arange(windows.shape[0])
+    low = windows[rows, np.maximum(count - 1, 0) // 2]
+    high = windows[rows, np.minimum(count // 2, width - 1)]
+    return np.where(count > 0, 0.5 * (low + high), np.nan)
+
+
+def robust_sd(values: FloatArray) -> float:
+    """Return 1.4826 times the median absolute deviation, NaN left out; NaN when nothing is finite.
+
+    The factor makes it the standard deviation of a normal sample (Rousseeuw and Croux 1993, J Am Stat Assoc 88:1273, from memory).
+
+    >>> round(robust_sd(np.array([0.0, 1.0, 2.0, 3.0, 100.0])), 4)
+    1.4826
+    """
+    finite = values[np.isfinite(values)]
+    if finite.size == 0:
+        return float("nan")
+    return float(1.4826 * np.median(np.abs(finite - np.median(finite))))
