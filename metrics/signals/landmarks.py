@@ -80,20 +80,13 @@ def end_of_ejection(pressure_mmhg: FloatArray, start: IntArray, end: IntArray, r
     LV: dP/dt minimum. RV: the first sample after it within 5 mmHg of the beat's end-diastolic pressure.
     """
     last = np.where(relaxing >= 0, relaxing + 1, end)
-    if chamber != "RV":
+    if chamber != "RV" or start.size == 0:
         return last
-    relaxed = (
-        pressure_mmhg <= np.repeat(taken(pressure_mmhg, start) + RELAXED_ABOVE_EDP_MMHG, _lengths(start, pressure_mmhg.size))
-    ).astype(np.float64)
+    beat_of_sample = np.clip(np.searchsorted(start, np.arange(pressure_mmhg.size), side="right") - 1, 0, None)
+    relaxed_below_mmhg = taken(pressure_mmhg, start) + RELAXED_ABOVE_EDP_MMHG
+    relaxed = (pressure_mmhg <= relaxed_below_mmhg[beat_of_sample]).astype(np.float64)
     first = argmax_within(relaxed, last, end)
     return np.where((first >= 0) & (relaxed[np.maximum(first, 0)] > 0.0), first + 1, end)
-
-
-def _lengths(start: IntArray, total: int) -> IntArray:
-    """Return how many samples each beat covers up to the next start, the first one from sample 0."""
-    edges = np.append(start, total)
-    edges[0] = 0
-    return np.diff(edges)
 
 
 def steadied(samples: FloatArray, sampling_rate_hz: float) -> FloatArray:
