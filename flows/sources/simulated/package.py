@@ -1,0 +1,62 @@
+"""An acquisition as the folder a site uploads.
+
+The inbox of the demo is what a site put there, not something the program keeps, so plain writes are right here.
+"""
+
+from __future__ import annotations
+
+import hashlib
+import json
+import os
+from collections.abc import Mapping
+from datetime import datetime
+from pathlib import Path
+
+import numpy as np
+
+from flows.sources.simulated.acquisition import DECIMALS, Acquisition
+from flows.sources.simulated.activation import FloatArray
+
+MANIFEST = "manifest-sha256.txt"
+
+
+def acquisition_files(acquisition: Acquisition) -> dict[str, bytes]:
+    """Return the payload of the package by file name: acquisition.json and one CSV file a run."""
+    files = {"acquisition.json": (json.dumps(acquisition.manifest, indent=2) + "\n").encode()}
+    for run in acquisition.manifest["runs"]:
+        files[run["file"]] = csv_text(acquisition.columns[run["run"]]).encode()
+    return files
+
+
+def csv_text(columns: Mapping[str, FloatArray]) -> str:
+    """Return columns as CSV text with a header; a missing sample is an empty cell."""
+    cells = [_cells(values, DECIMALS[name]) for name, values in columns.items()]
+    rows = [",".join(row) for row in zip(*cells, strict=True)]
+    return "\n".join([",".join(columns), *rows]) + "\n"
+
+
+def _cells(values: FloatArray, decimals: int) -> list[str]:
+    missing = np.isnan(values)
+    return ["" if gone else f"{value:.{decimals}f}" for value, gone in zip(values.tolist(), missing.tolist(), strict=True)]
+
+
+def write_package(folder: Path, acquisition: Acquisition, sent_at: datetime, *, complete: bool = True) -> None:
+    """Write the package; its checksums come last and all times of change are ``sent_at``.
+
+    A package that is not ``complete`` has no checksums yet: to the program it is still arriving.
+    """
+    folder.mkdir(parents=True, exist_ok=True)
+    files = acquisition_files(acquisition)
+    for name, content in files.items():
+        (folder / name).write_bytes(content)
+    if complete:
+        lines = [f"{hashlib.sha256(content).hexdigest()}  {name}\n" for name, content in sorted(files.items())]
+        (folder / MANIFEST).write_bytes("".join(lines).encode())
+    date_package(folder, sent_at)
+
+
+def date_package(folder: Path, sent_at: datetime) -> None:
+    """Set the time of change of a package and everything in it."""
+    seconds = sent_at.timestamp()
+    for path in (*sorted(folder.iterdir()), folder):
+        os.utime(path, (seconds, seconds))
