@@ -73,6 +73,11 @@ class Measured:
     corroborated: BoolArray | None = None
 
 
+def single(value: float, at_s: float = np.nan) -> Measured:
+    """Return what was measured of one acquisition or run, arrays of shape ()."""
+    return Measured(np.array(value, dtype=np.float64), np.array(at_s, dtype=np.float64))
+
+
 @dataclass(frozen=True)
 class Check:
     """One check: a measure plus declared limits; it holds no comparison and no message logic of its own.
@@ -115,3 +120,45 @@ class Judged:
     limit: FloatArray
     at_s: FloatArray
     trouble: str | None = None
+
+    def worst(self) -> Verdict:
+        """Return the gravest verdict of the subjects; NOT_EVALUATED when there is none."""
+        return max(self.verdict, key=_GRAVITY.__getitem__, default=Verdict.NOT_EVALUATED)
+
+
+_GRAVITY = {Verdict.PASS: 0, Verdict.NOT_EVALUATED: 1, Verdict.SUSPECT: 2, Verdict.FAIL: 3}
+
+
+def judge(check: Check, subject: object, limits: Limits, count: int = 1) -> Judged:
+    """Return the verdicts of a check on a subject with ``count`` members (1, or the number of beats).
+
+    This is the one place where a number meets a limit: beyond a fail bound is fail, beyond a suspect bound suspect, NaN not evaluated.
+    A measure that raises gives not evaluated for every member, with what it raised in ``trouble``.
+    """
+    nothing = np.full(count, np.nan)
+    try:
+        found = check.measure(subject)
+    except Exception as error:  # noqa: BLE001  (whatever a measure raises must not let data through, nor stop the other checks)
+        verdicts = (Verdict.NOT_EVALUATED,) * count
+        return Judged(check, nothing, verdicts, nothing.copy(), nothing.copy(), f"{type(error).__name__}: {error}")
+    value = np.broadcast_to(np.asarray(found.value, dtype=np.float64), (count,)).copy()
+    at_s = nothing.copy() if found.at_s is None else np.broadcast_to(np.asarray(found.at_s, dtype=np.float64), (count,)).copy()
+    borne_out = np.ones(count, dtype=bool) if found.corroborated is None else np.broadcast_to(found.corroborated, (count,))
+    failed, fail_bound = _beyond(value, limits.fail_above, limits.fail_below)
+    doubtful, suspect_bound = _beyond(value, limits.suspect_above, limits.suspect_below)
+    fails = failed & borne_out
+    suspects = (failed | doubtful) & ~fails
+    limit = np.where(fails, fail_bound, np.where(suspects, np.where(doubtful, suspect_bound, fail_bound), np.nan))
+    verdicts = tuple(
+        Verdict.NOT_EVALUATED if np.isnan(v) else Verdict.FAIL if f else Verdict.SUSPECT if s else Verdict.PASS
+        for v, f, s in zip(value.tolist(), fails.tolist(), suspects.tolist(), strict=True)
+    )
+    return Judged(check, value, verdicts, limit, at_s)
+
+
+def _beyond(value: FloatArray, above: float | None, below: float | None) -> tuple[BoolArray, FloatArray]:
+    """Return which values lie beyond either bound, and the bound each one crossed."""
+    over = np.zeros(value.shape, dtype=bool) if above is None else value > above
+    under = np.zeros(value.shape, dtype=bool) if below is None else value < below
+    crossed = np.where(over, np.nan if above is None else above, np.where(under, np.nan if below is None else below, np.nan))
+    return over | under, crossed

@@ -13,8 +13,8 @@ STATUSES = ("accepted", "queried", "rejected", "quarantined", "waiting", "supers
 class Packages(pa.DataFrameModel):
     """A package version: what arrived, and what became of it."""
 
-    site: str = text("the site whose inbox holds the package")
-    package: str = text("the folder the site uploaded")
+    site: str = text("the site whose inbox holds the package; null for what lies outside every site's folder", optional=True)
+    package: str = text("the folder the site uploaded; null for a site's folder as a whole", optional=True)
     acquisition: str = text("the acquisition the package names; null where it could not be read", optional=True)
     version: pd.Int64Dtype = count("counts the contents received under this acquisition's name, from 1", optional=True, at_least=1)
     status: str = text("what became of it; seen again stands outside every sum of distinct contents", among=STATUSES)

@@ -1,0 +1,50 @@
+"""Zero drift: how far the pressure zero moved between its first and last reading.
+
+Drift up to 2 mmHg is taken out silently, up to 5 mmHg taken out and flagged; beyond that a straight line between two readings is no
+longer to be trusted, and what an offset reaches is withheld. Customary drift of tip sensors is about 1 mmHg an hour (from memory).
+"""
+
+from __future__ import annotations
+
+import numpy as np
+
+from checks.check import Check, Level, Limits, Measured, single
+from checks.spoils import PRESSURE_OFFSET
+from checks.subject import AcquisitionSubject
+from metrics.signals.calibrate import two_point_line
+from metrics.signals.facts import PressureCalibration
+
+
+def drift_mmhg(calibration: PressureCalibration) -> float:
+    """Return how far apart the zero readings lie once through the two-point line, in mmHg; NaN with fewer than two.
+
+    >>> from metrics.signals.facts import ZeroReading
+    >>> drift_mmhg(PressureCalibration(zeros=(ZeroReading(0.5, 0.0), ZeroReading(3.5, 3600.0))))
+    3.0
+    """
+    if len(calibration.zeros) < 2:
+        return float("nan")
+    k, _ = two_point_line(calibration.points)
+    readings = [zero.mmhg for zero in calibration.zeros]
+    return (max(readings) - min(readings)) / abs(k)
+
+
+def zero_drift(subject: AcquisitionSubject) -> Measured:
+    """Return the largest drift any run is calibrated with, mmHg, shape (); its sign is ignored."""
+    drifts = [drift_mmhg(run.facts.pressure) for run in subject.runs] or [drift_mmhg(subject.facts.pressure)]
+    known = [drift for drift in drifts if np.isfinite(drift)]
+    return single(max(known) if known else np.nan)
+
+
+CHECK = Check(
+    name="zero-drift",
+    title="Pressure zero drift",
+    level=Level.ACQUISITION,
+    measure=zero_drift,
+    unit="mm[Hg]",
+    limits=Limits(suspect_above=2.0, fail_above=5.0, basis="engineering default of the method sheet, section 1.2"),
+    reason="the pressure zero moved by {value:.1f} mmHg between its readings (limit {limit:g} mmHg)",
+    remedy="check the transducer, send all zero readings and say when it was re-zeroed",
+    spoils=PRESSURE_OFFSET,
+    corrected=True,
+)

@@ -1,0 +1,35 @@
+"""Heart rate agreement: the beats come as often as the site's own monitor said.
+
+A second witness for the time base: a rate that is wrong by a factor shows here even when no clock times were sent. Heart rate wanders
+by some 10 % in health, and more in atrial fibrillation, so only gross differences count.
+"""
+
+from __future__ import annotations
+
+import numpy as np
+
+from checks.check import Check, Level, Limits, Measured, single
+from checks.spoils import TIME_SCALE
+from checks.subject import RunSubject
+
+
+def heart_rate_gap(subject: RunSubject) -> Measured:
+    """Return |measured / declared - 1| of heart rate, shape (); NaN undeclared or with fewer than three beats."""
+    declared = subject.facts.heart_rate_per_min
+    rr_s = subject.known_beats().rr_s
+    if declared is None or declared <= 0.0 or rr_s.size < 3:
+        return single(np.nan)
+    return single(abs(60.0 / float(np.median(rr_s)) / declared - 1.0))
+
+
+CHECK = Check(
+    name="heart-rate-agreement",
+    title="Heart rate against the declared one",
+    level=Level.RUN,
+    measure=heart_rate_gap,
+    unit="1",
+    limits=Limits(suspect_above=0.12, fail_above=0.25, basis="house default"),
+    reason="the beats' rate differs from the declared heart rate by {value:.0%} (limit {limit:.0%})",
+    remedy="confirm the heart rate and the sampling rate of this run",
+    spoils=TIME_SCALE,
+)

@@ -1,0 +1,111 @@
+"""What each kind of fault reaches: the one table of spoiled indices.
+
+Complete for constant errors (derived and confirmed on simulated hearts, see the metamorphic tests): an unrecoverable pressure offset
+moves EDP, ESP, Ea and V0 but not the slope Ees nor the loop's area; a volume offset moves V0 but no slope; and so on. Indices not yet
+computed stand in the sets already, so that an index added later is withheld from its first day.
+"""
+
+from __future__ import annotations
+
+PRESSURE_OFFSET = frozenset(
+    [
+        "EDP",
+        "ESP",
+        "Pmax",
+        "Ea",
+        "EaI",
+        "Ees_Ea",
+        "V0",
+        "V100",
+        "V120",
+        "PVA",
+        "PE",
+        "efficiency",
+        "PWRmax",
+        "PWRmax_EDV2",
+        "EDPVR_stiffness",
+        "V20",
+        "V30",
+    ]
+)
+PRESSURE_GAIN = frozenset(
+    [
+        "EDP",
+        "ESP",
+        "Pmax",
+        "Ea",
+        "EaI",
+        "Ees",
+        "SW",
+        "PRSW",
+        "dPdt_max",
+        "dPdt_min",
+        "V100",
+        "V120",
+        "PVA",
+        "PE",
+        "PWRmax",
+        "PWRmax_EDV2",
+        "dPdt_max_EDV",
+        "EDPVR_stiffness",
+        "V20",
+        "V30",
+        "Pinf",
+    ]
+)
+VOLUME_OFFSET = frozenset(["EDV", "EDVI", "ESV", "ESVI", "EF", "V0", "V100", "V120", "Vw", "V20", "V30", "PWRmax_EDV2"])
+VOLUME_GAIN = frozenset(
+    [
+        "EDV",
+        "EDVI",
+        "ESV",
+        "ESVI",
+        "SV",
+        "SVI",
+        "CO",
+        "CI",
+        "SW",
+        "Ea",
+        "EaI",
+        "Ees",
+        "V0",
+        "V100",
+        "V120",
+        "Vw",
+        "PVA",
+        "PE",
+        "PWRmax",
+        "PWRmax_EDV2",
+        "dPdt_max_EDV",
+        "EDPVR_beta",
+        "EDPVR_stiffness",
+        "V20",
+        "V30",
+    ]
+)
+TIME_SCALE = frozenset(["HR", "CO", "CI", "dPdt_max", "dPdt_min", "tau", "PWRmax", "PWRmax_EDV2", "dPdt_max_EDV"])
+SLOW_PRESSURE = frozenset(["dPdt_max", "dPdt_min", "tau", "Pinf", "dPdt_max_EDV"])
+"""What a fluid-filled line cannot carry: it must not feed dP/dt, tau or single-beat pressures (method sheet, section 1.2)."""
+
+PRELOAD_SLOPES = frozenset(
+    [
+        "Ees",
+        "V0",
+        "V100",
+        "V120",
+        "Ees_Ea",
+        "PRSW",
+        "Vw",
+        "dPdt_max_EDV",
+        "EDPVR_beta",
+        "EDPVR_stiffness",
+        "V20",
+        "V30",
+        "PVA",
+        "PE",
+        "efficiency",
+    ]
+)
+PRESSURE_SHAPE = PRESSURE_GAIN | PRESSURE_OFFSET | frozenset({"tau"})
+VOLUME_SHAPE = VOLUME_GAIN | VOLUME_OFFSET | frozenset({"Ees_Ea", "PRSW", "efficiency"})
+EVERYTHING = PRESSURE_SHAPE | VOLUME_SHAPE | TIME_SCALE | PRELOAD_SLOPES

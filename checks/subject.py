@@ -1,0 +1,100 @@
+"""What a check may look at: one run, or one acquisition with its runs."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from functools import cached_property
+
+import numpy as np
+
+from metrics.arrays import BoolArray, FloatArray, IntArray
+from metrics.signals.beats import Beats
+from metrics.signals.calibrate import Signals
+from metrics.signals.facts import AcquisitionFacts, RunFacts
+from metrics.signals.preload import PreloadWindow, preload_window
+from metrics.signals.recording import Channel, Recording
+
+REGURGITATION = frozenset({"mitral-regurgitation", "tricuspid-regurgitation", "aortic-regurgitation", "shunt"})
+"""Conditions under which forward stroke volume differs from the ventricle's own."""
+
+
+@dataclass(frozen=True)
+class RunSubject:
+    """One run: what the site declared, what was recorded, and what was computed from it.
+
+    ``signals`` and ``beats`` are None when the run cannot be put on a time base; ``trouble`` then says why. ``accepted`` has shape
+    (n_beats,) and is None until the beat checks have spoken.
+    """
+
+    facts: RunFacts
+    recording: Recording | None
+    signals: Signals | None = None
+    beats: Beats | None = None
+    accepted: BoolArray | None = None
+    trouble: str | None = None
+
+    @cached_property
+    def window(self) -> PreloadWindow | None:
+        """Return the usable window of a preload-reduction run, else None."""
+        if self.beats is None or self.facts.kind != "preload-reduction":
+            return None
+        return preload_window(self.beats, self.facts)
+
+    @property
+    def in_window(self) -> BoolArray:
+        """Return which beats lie in the usable window, shape (n_beats,); all False without one."""
+        if self.window is not None:
+            return self.window.inside
+        return np.zeros(0 if self.beats is None else len(self.beats), dtype=bool)
+
+    def known_beats(self) -> Beats:
+        """Return the beats; raises ValueError for a run that has none."""
+        if self.beats is None:
+            message = self.trouble or "the run has no beats"
+            raise ValueError(message)
+        return self.beats
+
+    def known_signals(self) -> Signals:
+        """Return the signals; raises ValueError for a run without a time base."""
+        if self.signals is None:
+            message = self.trouble or "the run has no time base"
+            raise ValueError(message)
+        return self.signals
+
+    def channel(self, name: str) -> Channel:
+        """Return a recorded channel; raises ValueError when the run does not hold it."""
+        if self.recording is None or name not in self.recording.channels:
+            message = f"the run has no {name} channel"
+            raise ValueError(message)
+        return self.recording.channels[name]
+
+    def start_s(self) -> FloatArray:
+        """Return when each beat begins, seconds from the run's first sample, shape (n_beats,)."""
+        return self.known_beats().start / self.known_signals().sampling_rate_hz
+
+    def beat_of_sample(self, at: IntArray) -> IntArray:
+        """Return which beat each grid sample belongs to, -1 outside every beat; shape of ``at``."""
+        beats = self.known_beats()
+        if len(beats) == 0:
+            return np.full(at.shape, -1, dtype=np.int64)
+        owner = np.searchsorted(beats.start, at, side="right") - 1
+        inside = (owner >= 0) & (at < beats.end[np.maximum(owner, 0)])
+        return np.where(inside, owner, -1)
+
+
+@dataclass(frozen=True)
+class AcquisitionSubject:
+    """One acquisition with its runs, after the beats of each run were judged."""
+
+    facts: AcquisitionFacts
+    runs: tuple[RunSubject, ...] = ()
+
+    def steady_medians(self) -> dict[str, float]:
+        """Return the median ``edv_ml``, ``esv_ml`` and ``sv_ml`` of the accepted beats of all steady runs; NaN without any."""
+        parts: dict[str, list[FloatArray]] = {"edv_ml": [], "esv_ml": [], "sv_ml": []}
+        for run in self.runs:
+            if run.facts.kind == "steady" and run.beats is not None and run.accepted is not None:
+                for name, values in parts.items():
+                    values.append(getattr(run.beats, name)[run.accepted])
+        joined = {name: np.concatenate(values) if values else np.empty(0) for name, values in parts.items()}
+        return {name: float(np.nanmedian(values)) if np.isfinite(values).any() else float("nan") for name, values in joined.items()}
