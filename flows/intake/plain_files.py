@@ -26,8 +26,8 @@ _FAULTS_OF_THE_FILE = {
 def open_inside(root: Path, path: str) -> BufferedReader:
     """Return the regular file at the plain relative ``path`` under ``root``, open for reading.
 
-    ``root`` itself and every step below it are opened without following links, so a folder swapped for a link meanwhile leads nowhere. Raises
-    InputError for links, pipes, devices, folders and what cannot be read; errors of the machine (no memory, no handles) pass through.
+    ``root`` itself and every step below it are opened without following links, so a folder swapped for a link meanwhile leads nowhere.
+    Raises InputError for links, pipes, devices, folders and what cannot be read; errors of the machine (memory, handles) pass through.
     """
     *folders, name = path.split("/")
     try:

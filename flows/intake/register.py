@@ -80,7 +80,7 @@ def _contents(arrivals: list[Arrival], known: list[Entry], refused: Mapping[str,
     found: dict[tuple[str, str, str], _Content] = {}
     for past in known:
         if past.package_sha256 is not None:
-            objection = past.reason if past.status == "quarantined" else refused.get(past.package_sha256, "")
+            objection = past.reason if past.status in {"quarantined", "seen again"} else refused.get(past.package_sha256, "")
             found[past.site, past.package, past.package_sha256] = _Content(past, past.package_sha256, past, objection)
     for arrival in arrivals:
         digest = arrival.package_sha256
@@ -111,15 +111,18 @@ def _split_repeats(contents: list[_Content]) -> tuple[list[_Content], list[Entry
         groups.setdefault(content.sha256, []).append(content)
     holders, repeats = [], []
     for group in groups.values():
-        holder, *others = sorted(group, key=lambda one: (not one.is_settled, bool(one.objection), _is_repeat(one), one.received))
+        holder, *others = sorted(group, key=lambda one: (not one.is_settled, bool(one.objection), _lateness(one), one.received))
         reason = f"the same content as {holder.entry.site}/{holder.entry.package}"
         holders.append(holder)
         repeats += [replace(other.entry, version=None, status="seen again", reason=reason) for other in others]
     return holders, repeats
 
 
-def _is_repeat(content: _Content) -> bool:
-    return content.prior is not None and content.prior.status == "seen again"
+def _lateness(content: _Content) -> int:
+    """Return 0 for what held its content before, 1 for what is seen first tonight, 2 for what was a repeat already."""
+    if content.prior is None:
+        return 1
+    return 2 if content.prior.status == "seen again" else 0
 
 
 def _split_names(holders: list[_Content]) -> tuple[list[Entry], list[_Content]]:
