@@ -36,7 +36,7 @@ LADDERS = (
     Ladder("column-misnamed", faults.column_misnamed, "1", (1.0,)),
     Ladder("samples-lost", signal_faults.samples_lost, "s", (0.02, 0.1, 0.4, 1.5)),
     Ladder("samples-scattered", signal_faults.samples_scattered, "1", (0.005, 0.02, 0.08, 0.2)),
-    Ladder("samples-doubled", signal_faults.samples_doubled, "s", (0.05, 0.3, 1.5)),
+    Ladder("stamps-repeated", signal_faults.stamps_repeated, "s", (0.05, 0.3, 1.5)),
     Ladder("time-backwards", signal_faults.time_backwards, "s", (0.2, 2.0)),
     Ladder("end-misdeclared", signal_faults.end_misdeclared, "s", (0.2, 2.0, 6.0, 20.0)),
     Ladder("flat-line", signal_faults.flat_line, "s", (0.1, 0.5, 1.0, 2.5)),

@@ -37,11 +37,13 @@ def samples_scattered(acquisition: Acquisition, share: float) -> Injected:
     return Injected(with_columns(acquisition, run, emptied), (Expected("time-gaps", run),))
 
 
-def samples_doubled(acquisition: Acquisition, seconds: float) -> Injected:
-    """Write every row of ``seconds`` of the first steady run twice, with its time stamp."""
+def stamps_repeated(acquisition: Acquisition, seconds: float) -> Injected:
+    """Let the recorder's clock advance only every other sample for ``seconds`` of the first steady run: stamps stand twice."""
     run, low, high = _stretch(acquisition, seconds)
-    columns = {name: np.insert(values, np.arange(low, high) + 1, values[low:high]) for name, values in acquisition.columns[run].items()}
-    return Injected(with_columns(acquisition, run, columns), (_touched(acquisition, "duplicated-samples", run, low, high),))
+    stamps = acquisition.columns[run][TIME].copy()
+    second = np.arange(low + 1, high, 2)
+    stamps[second] = stamps[second - 1]
+    return Injected(with_columns(acquisition, run, {TIME: stamps}), (_touched(acquisition, "duplicated-samples", run, low, high),))
 
 
 def time_backwards(acquisition: Acquisition, seconds: float) -> Injected:

@@ -52,8 +52,8 @@ class BeatTruth:
 
     @property
     def ea_mmhg_per_ml(self) -> FloatArray:
-        """Return end-systolic pressure over stroke volume, shape (n_beats,)."""
-        return self.esp_mmhg / self.sv_ml
+        """Return end-systolic pressure over stroke volume, shape (n_beats,), NaN for a beat that ejected nothing."""
+        return self.esp_mmhg / np.where(self.sv_ml > 0.0, self.sv_ml, np.nan)
 
     @property
     def middle_s(self) -> FloatArray:
@@ -103,7 +103,7 @@ def run_truth(solution: Solution) -> RunTruth:
         chamber=solution.heart.chamber,
         ees_mmhg_per_ml=solution.heart.ees_mmhg_per_ml,
         v0_ml=solution.heart.v0_ml,
-        ea_mmhg_per_ml=float(np.median(beats.ea_mmhg_per_ml[sound])),
+        ea_mmhg_per_ml=float(np.nanmedian(beats.ea_mmhg_per_ml[sound])),
         heart_rate_per_min=60.0 / float(np.median(beats.rr_s[sound])),
         edv_ml=float(np.median(beats.edv_ml[sound])),
         esv_ml=float(np.median(beats.esv_ml[sound])),
