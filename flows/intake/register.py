@@ -136,10 +136,8 @@ def _split_names(holders: list[_Content]) -> tuple[list[Entry], list[_Content]]:
         owner = owners.get(holder.entry.acquisition)
         objection = holder.objection
         if not objection and owner is not None and owner.entry.site != holder.entry.site:
-            objection = (
-                f"acquisition.json: acquisition: the name {holder.entry.acquisition!r} is taken by "
-                f"{owner.entry.site}/{owner.entry.package}. Acquisition names are unique in the study; give it another."
-            )
+            taken = f"the name {holder.entry.acquisition!r} is taken by site {owner.entry.site!r}"
+            objection = f"acquisition.json: acquisition: {taken}. Acquisition names are unique in the study; give it another."
         if objection:
             quarantined.append(replace(holder.entry, version=None, status="quarantined", reason=objection))
         else:

@@ -146,7 +146,7 @@ def test_a_broken_package_that_goes_away_stays_on_record_once():
 def test_one_name_from_two_sites_quarantines_the_second():
     found = classify([whole("p1", "b", site="moor", hour=1), whole("p1", "a")], [])
     assert statuses(found) == {("harbour", "p1", "a"): (1, "new"), ("moor", "p1", "b"): (None, "quarantined")}
-    assert "taken by harbour/p1" in found[1].reason
+    assert "taken by site 'harbour'" in found[1].reason
 
 
 def test_two_sites_at_the_same_instant_are_ordered_by_name():
