@@ -83,7 +83,9 @@ class Check:
     """One check: a measure plus declared limits; it holds no comparison and no message logic of its own.
 
     ``reason`` is a sentence with ``{value}`` and ``{limit}``; ``spoils`` names the indices a fail on run or acquisition level reaches;
-    ``makes_unusable`` says that a failed run is unusable as a whole; ``remedy`` is what the site can do about it.
+    ``remedy`` is what the site can do about it. ``corrected`` marks a fault that calibration takes out as long as the check does not fail,
+    ``is_fact`` one whose value and limit say nothing to a reader. ``after_beats`` waits for the verdicts on beats; a ``required`` beat
+    check that could not be evaluated rejects the beat.
     """
 
     name: str
@@ -96,7 +98,6 @@ class Check:
     remedy: str = ""
     limits_rv: Limits | None = None
     spoils: frozenset[str] = frozenset()
-    makes_unusable: bool = False
     corrected: bool = False
     is_fact: bool = False
     run_kinds: tuple[str, ...] = ("steady", "preload-reduction")

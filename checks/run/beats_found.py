@@ -22,5 +22,4 @@ CHECK = Check(
     reason="only {value:.0f} whole beats were found (limit {limit:.0f})",
     remedy="check that the pressure channel holds ventricular pressure and the run is long enough",
     spoils=EVERYTHING,
-    makes_unusable=True,
 )

@@ -23,6 +23,5 @@ CHECK = Check(
     reason="the run cannot be used: {trouble}",
     remedy="correct the file or its entry in acquisition.json and send the package again",
     spoils=EVERYTHING,
-    makes_unusable=True,
     is_fact=True,
 )

@@ -26,5 +26,4 @@ CHECK = Check(
     reason="{value:.1%} of the run's samples are missing (limit {limit:.0%})",
     remedy="export the run again; look for lost packets between recorder and disk",
     spoils=EVERYTHING,
-    makes_unusable=True,
 )

@@ -134,7 +134,7 @@ def calibrated(recording: Recording, facts: RunFacts) -> Signals:
         on_grid[name], recorded_at[name] = values, positions
         if name in {"pressure", "volume"} or name.startswith("segment-"):
             missing |= lost
-    recorded_volume, volume_unit = _total_volume(on_grid, recording)
+    recorded_volume, volume_unit = _total_volume(on_grid, recording, facts.segments_used)
     pressure_mmhg = calibrated_pressure_mmhg(on_grid["pressure"], time_s, facts.pressure)
     volume_ml = calibrated_volume_ml(recorded_volume, volume_unit, facts.volume)
     smooth_pressure, smooth_volume = zero_phase(pressure_mmhg, sampling_rate_hz), zero_phase(volume_ml, sampling_rate_hz)
@@ -197,13 +197,13 @@ def _placed(channel: Channel, time_s: FloatArray, sampling_rate_hz: float) -> tu
     return values, away_s > 0.75 * step_s, positions
 
 
-def _total_volume(on_grid: dict[str, FloatArray], recording: Recording) -> tuple[FloatArray, str]:
-    """Return the volume channel, or the sum of the segments where there is none, with its unit."""
+def _total_volume(on_grid: dict[str, FloatArray], recording: Recording, segments_used: tuple[int, ...]) -> tuple[FloatArray, str]:
+    """Return the volume channel, or the sum of the segments in use where there is none, with its unit."""
     if "volume" in on_grid:
         return on_grid["volume"], recording.channels["volume"].unit
-    names = sorted(name for name in on_grid if name.startswith("segment-"))
-    if not names:
-        message = "neither a volume channel nor segments"
+    names = [f"segment-{number}" for number in segments_used] or sorted(name for name in on_grid if name.startswith("segment-"))
+    if not names or not set(names) <= set(on_grid):
+        message = "neither a volume channel nor the segments it is the sum of"
         raise ValueError(message)
     total: FloatArray = np.sum([on_grid[name] for name in names], axis=0)
     return total, recording.channels[names[0]].unit

@@ -52,7 +52,10 @@ class ReferenceVolumes:
 
 @dataclass(frozen=True, slots=True)
 class RunFacts:
-    """What the site declared about one run. ``events`` are (at_s, kind) pairs; ``duration_s`` is ended_at minus started_at."""
+    """What the site declared about one run. ``events`` are (at_s, kind) pairs; ``duration_s`` is ended_at minus started_at.
+
+    ``segments_used`` numbers from 1 the segments whose sum is the volume; empty means all of them.
+    """
 
     run: str
     kind: str
@@ -66,6 +69,7 @@ class RunFacts:
     respiration: str | None = None
     conditions: frozenset[str] = frozenset()
     events: tuple[tuple[float, str], ...] = ()
+    segments_used: tuple[int, ...] = ()
     pressure: PressureCalibration = field(default_factory=PressureCalibration)
     volume: VolumeCalibration = field(default_factory=VolumeCalibration)
 
