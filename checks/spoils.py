@@ -85,7 +85,7 @@ VOLUME_GAIN = frozenset(
 )
 TIME_SCALE = frozenset(["HR", "CO", "CI", "dPdt_max", "dPdt_min", "tau", "PWRmax", "PWRmax_EDV2", "dPdt_max_EDV"])
 SLOW_PRESSURE = frozenset(["dPdt_max", "dPdt_min", "tau", "Pinf", "dPdt_max_EDV"])
-"""What a fluid-filled line cannot carry: it must not feed dP/dt, tau or single-beat pressures (method sheet, section 1.2)."""
+"""What a fluid-filled line cannot carry: it must not feed dP/dt, tau or single-beat pressures; common practice, no source."""
 
 PRELOAD_SLOPES = frozenset(
     [

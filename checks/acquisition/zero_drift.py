@@ -42,7 +42,7 @@ CHECK = Check(
     level=Level.ACQUISITION,
     measure=zero_drift,
     unit="mm[Hg]",
-    limits=Limits(suspect_above=2.0, fail_above=5.0, basis="engineering default of the method sheet, section 1.2"),
+    limits=Limits(suspect_above=2.0, fail_above=5.0, basis="house default; customary drift is about 1 mmHg an hour (from memory)"),
     reason="the pressure zero moved by {value:.1f} mmHg between its readings (limit {limit:g} mmHg)",
     remedy="check the transducer, send all zero readings and say when it was re-zeroed",
     spoils=PRESSURE_OFFSET,

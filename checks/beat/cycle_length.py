@@ -16,7 +16,7 @@ from metrics.arrays import BoolArray, FloatArray, median_before, running_median
 NEIGHBOURS = 8
 PAUSE = 1.20
 WEAK_DPDT = 0.80
-"""A second sign: the pause of the project's limits, or dP/dt maximum 20 % below its neighbours' median (house default)."""
+"""A second sign: a pause 20 % longer than usual, or dP/dt maximum 20 % below its neighbours' median (house default)."""
 
 
 def preceding_ratio(rr_s: FloatArray) -> FloatArray:
@@ -67,7 +67,7 @@ PREMATURE = Check(
     level=Level.BEAT,
     measure=prematurity,
     unit="1",
-    limits=Limits(suspect_below=0.80, fail_below=0.80, basis="0.80 of the 8 before, with a second sign (project limits)"),
+    limits=Limits(suspect_below=0.80, fail_below=0.80, basis="0.80 of the 8 before, with a second sign; house default"),
     reason="the beat comes after {value:.0%} of the usual interval (limit {limit:.0%})",
     remedy="none; a premature beat is left out",
 )
@@ -77,7 +77,7 @@ AFTER = Check(
     level=Level.BEAT,
     measure=prematurity_before,
     unit="1",
-    limits=Limits(fail_below=0.80, basis="0.80 of the 8 before, with a second sign (project limits)"),
+    limits=Limits(fail_below=0.80, basis="0.80 of the 8 before, with a second sign; house default"),
     reason="the beat before came after {value:.0%} of the usual interval (limit {limit:.0%}), so this one is potentiated",
     remedy="none; the beat after a premature one is left out",
 )

@@ -1,7 +1,7 @@
 """Flat line: a signal that stands still while the heart does not.
 
-Quantised diastasis and plateaus are flat in health, so only identical raw samples for more than 0.4 of the beat count (the share is
-that of the project's limits, after simulated quantised hearts).
+Quantised diastasis and plateaus are flat in health, so only identical raw samples for more than 0.4 of the beat count (a share found on
+simulated quantised hearts).
 """
 
 from __future__ import annotations

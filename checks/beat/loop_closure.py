@@ -54,7 +54,7 @@ CHECK = Check(
     level=Level.BEAT,
     measure=closure_gap,
     unit="1",
-    limits=Limits(suspect_above=0.08, fail_above=0.15, basis="project limits; spread rule after simulated irregular and breathing hearts"),
+    limits=Limits(suspect_above=0.08, fail_above=0.15, basis="house default; spread rule after simulated irregular and breathing hearts"),
     reason="the loop ends {value:.0%} of stroke volume from where it began, beyond the run's own trend (limit {limit:.0%})",
     remedy="none for the beat; ask whether the catheter moved",
 )

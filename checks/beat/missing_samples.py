@@ -34,7 +34,7 @@ CHECK = Check(
     level=Level.BEAT,
     measure=longest_gap,
     unit="s",
-    limits=Limits(fail_above=0.010, basis="half the 20-30 ms window dP/dt needs (method sheet, section 1.3)"),
+    limits=Limits(fail_above=0.010, basis="half the 20-30 ms window dP/dt needs; house default"),
     reason="{value:.3f} s of samples are missing inside the beat (limit {limit:.3f} s)",
     remedy="none for the beat; look for lost packets between recorder and disk",
     required=True,

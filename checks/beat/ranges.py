@@ -1,7 +1,7 @@
 """Hard physiological ranges: a beat outside them is not a beat of a human ventricle.
 
-One card a quantity over one measure. The bounds are the method sheet's (section 6, engineering defaults, wide on purpose: they reject
-units and sensors, not patients). Children and animals need a protocol of their own.
+One card a quantity over one measure. The bounds are house defaults, wide on purpose: they reject units and sensors, not patients.
+Children and animals need a protocol of their own.
 """
 
 from __future__ import annotations
@@ -11,7 +11,7 @@ from collections.abc import Callable
 from checks.check import Check, Level, Limits, Measured
 from checks.subject import RunSubject
 
-_BASIS = "method sheet, section 6, engineering default"
+_BASIS = "house default, wide on purpose"
 
 
 def beat_quantity(name: str) -> Callable[[RunSubject], Measured]:

@@ -38,9 +38,7 @@ ADEQUACY = Check(
     level=Level.RUN,
     measure=load_fall,
     unit="1",
-    limits=Limits(
-        suspect_below=0.20, fail_below=0.12, basis="20 % is the method sheet's engineering default; below 12 % slopes scatter by a third"
-    ),
+    limits=Limits(suspect_below=0.20, fail_below=0.12, basis="house default 20 %; below 12 % slopes scatter by a third"),
     reason="end-diastolic volume falls by only {value:.0%} in the usable window (limit {limit:.0%})",
     remedy="repeat the manoeuvre with a fuller occlusion",
     spoils=PRELOAD_SLOPES,
@@ -53,7 +51,7 @@ BEATS = Check(
     level=Level.RUN,
     measure=window_beats,
     unit="1",
-    limits=Limits(suspect_below=6.0, fail_below=5.0, basis="5-10 consecutive beats are usual (method sheet, from memory)"),
+    limits=Limits(suspect_below=6.0, fail_below=5.0, basis="5-10 consecutive beats are usual (from memory)"),
     reason="only {value:.0f} accepted beats lie in the usable window (limit {limit:.0f})",
     remedy="repeat the manoeuvre more slowly, without premature beats",
     spoils=PRELOAD_SLOPES,

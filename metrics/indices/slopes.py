@@ -1,7 +1,7 @@
 """Slopes over the usable window of preload-reduction runs: one line a run, runs of one manoeuvre pooled.
 
 Runs are pooled by the mean of their lines (each run has its own baseline, so throwing all points on one heap would bend the slope);
-the interval then joins the runs' own. Beats needed: method sheet, section 3 (5-10 consecutive beats usual, from memory).
+the interval then joins the runs' own. Beats needed: 5-10 consecutive ones are usual (from memory).
 """
 
 from __future__ import annotations

@@ -1,6 +1,6 @@
 """The median of a per-beat quantity over the accepted beats of a stage's steady runs: how every steady-state index is made.
 
-A mean of ratios is not the ratio of means, so each quantity is formed per beat and its median published (method sheet, section 4).
+A mean of ratios is not the ratio of means, so each quantity is formed per beat and its median published.
 """
 
 from __future__ import annotations

@@ -1,7 +1,7 @@
 """From recorded channels to one calibrated, filtered time base.
 
-The order is that of the method sheet: two-point line, zero drift, declared delay, conductance or raw volume to mL, then the common
-filter. The sheet's formulas: Baan 1984, Circulation 70:812 (read in abstract) for conductance; the two-point line and the linear zero
+The order: two-point line, zero drift, declared delay, conductance or raw volume to mL, then the common
+filter. Baan 1984, Circulation 70:812 (read in abstract) for conductance; the two-point line and the linear zero
 drift are common practice, no source.
 """
 

@@ -1,7 +1,7 @@
 """One zero-phase low-pass for all channels, and dP/dt.
 
-Filtering one channel alone with a delay rotates the loop (10 ms of delay moves stroke work by 2 %, computed for the method sheet of
-this project), so every channel passes the same filter, forwards and backwards.
+Filtering one channel alone with a delay rotates the loop (10 ms of delay moves stroke work by 2 %, computed on a
+simulated heart), so every channel passes the same filter, forwards and backwards.
 """
 
 from __future__ import annotations
@@ -16,7 +16,7 @@ CUTOFF_HZ = 50.0
 
 SLOPE_WINDOW_S = 0.060
 SLOPE_ORDER = {"LV": 5, "RV": 3}
-"""Savitzky-Golay window and polynomial order for dP/dt. A quintic over 60 ms bends like a cubic over the sheet's 20-30 ms but lets less
+"""Savitzky-Golay window and polynomial order for dP/dt. A quintic over 60 ms bends like a cubic over the customary 20-30 ms (from memory) but lets less
 noise through: with 0.5 mmHg at 250 Hz the maximum is 1 % off instead of 5 %. The right ventricle's upstroke is four times less steep,
 so there noise weighs more and the cubic is the better bargain (2 % off instead of 10 %); computed on simulated hearts."""
 

@@ -1,6 +1,6 @@
 """Landmarks of each beat that need no fit; end-systole waits for the verdicts (`metrics.indices.end_systole`).
 
-Definitions (method sheet, section 2): end-diastole is the last sample before dP/dt exceeds 10 % of the beat's maximum, preferred for
+Definitions: end-diastole is the last sample before dP/dt exceeds 10 % of the beat's maximum, preferred for
 micromanometers (from memory) because volume cannot show it where the electrogram leaks into conductance (McGuirk 2009, J Biomed Sci
 Eng 2:491, read). End-systolic volume is the smallest volume between end-diastole and dP/dt minimum; the right ventricle keeps
 ejecting, so there to the end of relaxation (pressure within 5 mmHg of the beat's end-diastolic pressure).

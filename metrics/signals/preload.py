@@ -1,7 +1,7 @@
 """Which beats of a preload-reduction run may carry a slope: from the onset of the fall to the reflex or the nadir.
 
 Beats before the onset repeat one load, the deflation runs back up another path, and once heart rate answers the baroreflex changes
-contractility: heart rate within 10 % of its value before the occlusion (method sheet, from memory), on a median of 5 beats so that one
+contractility: heart rate within 10 % of its value before the occlusion (customary, from memory), on a median of 5 beats so that one
 premature beat does not end the window. In declared atrial fibrillation there is no reflex cut. No limit on the length.
 """
 

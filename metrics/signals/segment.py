@@ -13,7 +13,7 @@ from metrics.arrays import BoolArray, FloatArray, IntArray
 
 STRONG = 0.40
 WEAK = 0.10
-"""Fractions of the neighbours' dP/dt maximum. 10-20 % of the running maximum is the method sheet's fallback threshold (from memory);
+"""Fractions of the neighbours' dP/dt maximum. 10-20 % of the running maximum is a customary fallback threshold (from memory);
 0.40 without an R wave keeps noise and pressure waves of breathing out; house default."""
 
 REFRACTORY_S = 0.150
