@@ -19,6 +19,7 @@ class SignalColumn(DeclaredModel):
     """What every channel may say: its column, how late it is, and a file and rate of its own."""
 
     column: Column
+    unit: str
     delay_ms: float = 0.0
     file: FilePath | None = None
     sampling_rate_hz: Positive | None = None

@@ -85,6 +85,20 @@ class ManifestRun(DeclaredModel):
             raise fault(problem, "Add channels.volume, or channels.segments.")
         return self
 
+    @model_validator(mode="after")
+    def _channels_tell_apart(self) -> Self:
+        taken = {} if self.channels.time is None else {(self.file, self.channels.time.column): "time"}
+        for name, channel in self.channels.signals().items():
+            twin = taken.setdefault((channel.file or self.file, channel.column), name)
+            if twin != name:
+                problem = f"channels {twin} and {name} name the same column {channel.column!r}"
+                raise fault(problem, "Name each channel's own column.")
+        segments = self.channels.segments
+        if self.channels.volume is None and len({(segment.unit, segment.is_raw, segment.delay_ms) for segment in segments}) > 1:
+            problem = "segments whose sum is the volume differ in unit, calibrated or delay_ms"
+            raise fault(problem, "Give all segments the same.")
+        return self
+
     def signal_files(self) -> tuple[str, ...]:
         """Return the files this run is read from, its own first."""
         others = {channel.file for channel in self.channels.signals().values() if channel.file is not None}

@@ -5,7 +5,7 @@ from dataclasses import replace
 from datetime import UTC, datetime, timedelta
 from pathlib import Path
 
-from hypothesis import given
+from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from flows.intake.arrival import Arrival
@@ -224,6 +224,7 @@ def arrivals_of_a_night(draw):
     return found
 
 
+@settings(deadline=None)
 @given(nights=st.lists(arrivals_of_a_night(), min_size=1, max_size=4), refused=st.sets(st.sampled_from("abcdef"), max_size=2))
 def test_whatever_arrives_counts_add_up_and_a_quiet_night_changes_nothing(nights, refused):
     refusals = {content(letter): "refused" for letter in refused}
