@@ -65,7 +65,7 @@ VOLUMES = Check(
     level=Level.ACQUISITION,
     measure=volume_gap,
     unit="1",
-    limits=Limits(suspect_above=0.05, fail_above=0.10, basis="house default; mean parallel-volume error 7 % (Baan 1984, read in abstract)"),
+    limits=Limits(suspect_above=0.08, fail_above=0.12, basis="house default; mean parallel-volume error 7 % (Baan 1984, read in abstract)"),
     reason="volumes are shifted against the reference by {value:.0%} of its end-diastolic volume (limit {limit:.0%})",
     remedy="repeat the parallel-volume (saline) calibration or confirm the reference volumes",
     spoils=VOLUME_OFFSET,

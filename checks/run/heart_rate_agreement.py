@@ -28,7 +28,7 @@ CHECK = Check(
     level=Level.RUN,
     measure=heart_rate_gap,
     unit="1",
-    limits=Limits(suspect_above=0.12, fail_above=0.25, basis="house default"),
+    limits=Limits(suspect_above=0.10, fail_above=0.20, basis="house default"),
     reason="the beats' rate differs from the declared heart rate by {value:.0%} (limit {limit:.0%})",
     remedy="confirm the heart rate and the sampling rate of this run",
     spoils=TIME_SCALE,

@@ -16,9 +16,10 @@ CUTOFF_HZ = 50.0
 
 SLOPE_WINDOW_S = 0.060
 SLOPE_ORDER = {"LV": 5, "RV": 3}
-"""Savitzky-Golay window and polynomial order for dP/dt. A quintic over 60 ms bends like a cubic over the customary 20-30 ms (from memory) but lets less
-noise through: with 0.5 mmHg at 250 Hz the maximum is 1 % off instead of 5 %. The right ventricle's upstroke is four times less steep,
-so there noise weighs more and the cubic is the better bargain (2 % off instead of 10 %); computed on simulated hearts."""
+"""Savitzky-Golay window and polynomial order for dP/dt. A quintic over 60 ms bends like a cubic over the customary 20-30 ms (from
+memory) but lets less noise through: with 0.5 mmHg at 250 Hz the maximum is 1 % off instead of 5 %. The right ventricle's upstroke is
+four times less steep, so there noise weighs more and the cubic is the better bargain (2 % off instead of 10 %); computed on simulated
+hearts."""
 
 
 def zero_phase(samples: FloatArray, sampling_rate_hz: float) -> FloatArray:

@@ -29,7 +29,7 @@ def beats_of(signals: Signals, chamber: str) -> Beats:
     found_r = r_waves(signals.ecg_mv, rate) if signals.ecg_mv is not None else np.empty(0, dtype=np.int64)
     peak, r_at = upstrokes(signals.dpdt_mmhg_per_s, found_r, rate)
     diastole = end_diastoles(signals.dpdt_mmhg_per_s, peak, rate)
-    keep = np.append(True, np.diff(diastole) > 0) if diastole.size else np.empty(0, dtype=bool)
+    keep = (diastole >= 0) & (np.diff(diastole, prepend=-1) > 0)
     diastole, peak, r_at = diastole[keep], peak[keep], r_at[keep]
     start, end = diastole[:-1], diastole[1:]
     peak, this_r, next_r = peak[:-1], r_at[:-1], r_at[1:]
@@ -61,17 +61,22 @@ def beats_of(signals: Signals, chamber: str) -> Beats:
 def end_diastoles(dpdt_mmhg_per_s: FloatArray, peak: IntArray, sampling_rate_hz: float) -> IntArray:
     """Return, before each dP/dt maximum, the last sample at which dP/dt is still at or below 10 % of it; shape of ``peak``.
 
+    -1 where the run begins in the middle of the upstroke. Where dP/dt stays above that for 250 ms, its smallest value is taken.
+
     >>> end_diastoles(np.array([0.0, 1.0, 0.0, 6.0, 50.0, 100.0, 80.0]), np.array([5]), 250.0).tolist()
     [3]
+    >>> end_diastoles(np.array([40.0, 50.0, 100.0, 80.0]), np.array([2]), 250.0).tolist()
+    [-1]
     """
     if peak.size == 0:
         return peak
     reach = max(2, round(UPSTROKE_SEARCH_S * sampling_rate_hz))
-    back = np.maximum(peak[:, None] - np.arange(1, reach), 0)
-    below = dpdt_mmhg_per_s[back] <= UPSTROKE_SHARE * dpdt_mmhg_per_s[peak][:, None]
-    first = np.where(below.any(axis=1), below.argmax(axis=1), reach - 2)
-    found: IntArray = back[np.arange(peak.size), first]
-    return found
+    back = peak[:, None] - np.arange(1, reach)
+    slope = np.where(back >= 0, dpdt_mmhg_per_s[np.maximum(back, 0)], np.inf)
+    below = slope <= UPSTROKE_SHARE * dpdt_mmhg_per_s[peak][:, None]
+    first = np.where(below.any(axis=1), below.argmax(axis=1), slope.argmin(axis=1))
+    found = back[np.arange(peak.size), first]
+    return np.where(~below.any(axis=1) & (peak < reach), -1, found)
 
 
 def end_of_ejection(pressure_mmhg: FloatArray, start: IntArray, end: IntArray, relaxing: IntArray, chamber: str) -> IntArray:
