@@ -46,17 +46,27 @@ VOLUME_GAIN = (("EDV", "SV", "Ea", "Ees"), ("EDP", "PRSW"))
 VOLUME_OFFSET = (("EDV", "EF", "V0"), ("SV", "Ea", "Ees", "SW", "PRSW"))
 UNTOUCHED = ((), ("EDV", "SV", "ESP", "Ees"))
 PRESSURE_PEAK = (("Pmax", "ESP", "SW"), ("EDV", "SV", "EF"))
-TIME_SCALE = (("HR", "CO", "dPdt_max"), ("EDV", "SV", "EF"))
+TIME_SCALE = (("HR", "dPdt_max"), ("EDV", "SV", "EF"))
 SLOPES_GONE = (("Ees", "PRSW"), ("EDV", "SV", "ESP"))
 """Indices that a fault must withhold, and indices it cannot touch: what a constant error does to each is arithmetic."""
+
+
+@dataclass(frozen=True, slots=True)
+class TrueIndex:
+    """What an index of a stage truly is."""
+
+    stage: str
+    index: str
+    value: float
 
 
 @dataclass(frozen=True, slots=True)
 class PutIn:
     """One package and what should become of it.
 
-    ``found`` is the name of a check, the status of a package, or empty for a clean one. ``expected`` holds runs and instants inside
-    the beats truly touched; it is empty until the study is made. ``withheld`` and ``published`` are indices.
+    ``found`` is the name of a check, the status of a package, or empty for a clean one. ``withheld`` and ``published`` are indices.
+    Known once the study is made, empty before: ``expected`` holds runs and instants inside the beats truly touched, ``truths`` the
+    true indices of a clean acquisition.
     """
 
     package: str
@@ -67,6 +77,7 @@ class PutIn:
     withheld: tuple[str, ...] = ()
     published: tuple[str, ...] = ()
     expected: tuple[Expected, ...] = ()
+    truths: tuple[TrueIndex, ...] = ()
 
 
 @dataclass(frozen=True, slots=True)
@@ -167,10 +178,10 @@ CASES = (
         "weir",
         "W-002",
         "normal",
-        "rate declared a quarter too high, no time stamps",
+        "rate declared twice too high, no time stamps",
         "heart-rate-agreement",
         faults.clock_misdeclared,
-        1.25,
+        2.0,
         TIME_SCALE,
     ),
     Case("weir", "W-003", "right-loaded", "occlusion too shallow", "preload-adequacy", faults.occlusion_shallow, 0.92, SLOPES_GONE),

@@ -86,7 +86,7 @@ def _filling_pressure(heart: Heart, conditions: Conditions, beats: Schedule, ste
         if occlusion.deflation_s is not None:
             since = np.clip(run_s - occlusion.deflation_s, 0.0, None)
             held = 1.0 - math.exp(-max(occlusion.deflation_s - occlusion.onset_s, 0.0) / occlusion.time_constant_s)
-            fall = np.where(since > 0.0, held * np.exp(-since / (0.5 * occlusion.time_constant_s)), fall)
+            fall = np.where(since > 0.0, held * np.exp(-since / occlusion.time_constant_s), fall)
         level = 1.0 - (1.0 - occlusion.floor) * fall
     if conditions.breathing is not None:
         phase = 2.0 * math.pi * conditions.breathing.rate_per_min / 60.0 * (run_s + WARM_UP_S)

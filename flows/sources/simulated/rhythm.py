@@ -22,6 +22,7 @@ POTENTIATION_DECAY = 0.35
 class Occlusion:
     """A fall of the filling pressure: exponential from ``onset_s`` towards ``floor`` (a fraction), back after ``deflation_s``.
 
+    The way back takes the same time constant: the blood stored between the balloon and the ventricle empties and fills alike.
     ``reflex`` is the fraction by which the heart rate has risen long after, beginning ``reflex_delay_s`` after the onset.
     """
 

@@ -12,8 +12,8 @@ from pathlib import Path
 import numpy as np
 
 from flows.errors import InputError
-from flows.sources.simulated.acquisition import RECORDING_HOUR, Identity, Recipe, RunPlan, made, rest_and_ramp
-from flows.sources.simulated.cases import CASES, PROTOCOL, SITES, Case, PutIn
+from flows.sources.simulated.acquisition import RECORDING_HOUR, Acquisition, Identity, Recipe, RunPlan, made, rest_and_ramp
+from flows.sources.simulated.cases import CASES, PROTOCOL, SITES, Case, PutIn, TrueIndex
 from flows.sources.simulated.faults import Injected
 from flows.sources.simulated.heart import Heart, heart_named
 from flows.sources.simulated.package import date_package, write_package
@@ -53,7 +53,25 @@ def _upload(inbox: Path, case: Case, number: int) -> list[PutIn]:
     for put_in in later:
         write_package(inbox / put_in.package, sound, sent_at + timedelta(days=1))
     # What a superseded version held is no longer in the tables, so nothing of it can be looked for there.
-    return [replace(first, expected=() if case.sent == "corrected" else injected.expected), *later]
+    sent = [replace(first, expected=() if case.sent == "corrected" else injected.expected), *later]
+    return [put_in if put_in.found else replace(put_in, truths=_truths(sound)) for put_in in sent]
+
+
+def _truths(acquisition: Acquisition) -> tuple[TrueIndex, ...]:
+    """Return the true indices of each stage: the end-systolic line from its occlusion, the rest from its steady run.
+
+    Stroke work recruits along a line that is not quite straight, so its slope has no one truth and is left out.
+    """
+    truths = []
+    for plan in acquisition.recipe.runs:
+        truth = acquisition.truth[plan.run]
+        if plan.conditions.occlusion is not None:
+            values = {"Ees": truth.ees_mmhg_per_ml, "V0": truth.v0_ml}
+        else:
+            values = {"EDV": truth.edv_ml, "SV": truth.sv_ml, "EDP": truth.edp_mmhg, "ESP": truth.esp_mmhg, "Ea": truth.ea_mmhg_per_ml}
+            values |= {"SW": truth.sw_mmhg_ml, "HR": truth.heart_rate_per_min}
+        truths += [TrueIndex(plan.stage, index, value) for index, value in values.items()]
+    return tuple(truths)
 
 
 def _alter(path: Path) -> None:

@@ -6,6 +6,7 @@ from dataclasses import dataclass
 from itertools import pairwise
 
 import numpy as np
+from numpy.typing import NDArray
 
 from flows.sources.simulated.activation import FloatArray
 from flows.sources.simulated.circulation import Solution
@@ -94,10 +95,7 @@ def run_truth(solution: Solution) -> RunTruth:
     beats = beat_truth(solution)
     sound = ~np.asarray(beats.premature)
     ramp = np.asarray(beats.in_ramp) & sound
-    slope, volume_axis = np.nan, np.nan
-    if ramp.sum() > 2:  # a line with something to spare
-        slope, intercept = np.polyfit(beats.edv_ml[ramp], beats.sw_mmhg_ml[ramp], 1)
-        volume_axis = -intercept / slope
+    slope, volume_axis = stroke_work_line(beats, ramp)
     return RunTruth(
         beats=beats,
         chamber=solution.heart.chamber,
@@ -113,9 +111,21 @@ def run_truth(solution: Solution) -> RunTruth:
         pmax_mmhg=float(np.median(beats.pmax_mmhg[sound])),
         sw_mmhg_ml=float(np.median(beats.sw_mmhg_ml[sound])),
         dpdt_max_mmhg_per_s=float(np.median(beats.dpdt_max_mmhg_per_s[sound])),
-        prsw_mmhg=float(slope),
-        vw_ml=float(volume_axis),
+        prsw_mmhg=slope,
+        vw_ml=volume_axis,
     )
+
+
+def stroke_work_line(beats: BeatTruth, chosen: NDArray[np.bool_]) -> tuple[float, float]:
+    """Return slope (mmHg) and volume-axis intercept (mL) of true stroke work on true end-diastolic volume over the chosen beats.
+
+    ``chosen`` has shape (n_beats,); with fewer than three beats both are NaN. The relation is not exactly straight in this model, so
+    compare with an estimate over the same beats.
+    """
+    if int(chosen.sum()) < 3:
+        return np.nan, np.nan
+    slope, intercept = np.polyfit(beats.edv_ml[chosen], beats.sw_mmhg_ml[chosen], 1)
+    return float(slope), float(-intercept / slope)
 
 
 def beat_truth(solution: Solution) -> BeatTruth:

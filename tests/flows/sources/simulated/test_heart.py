@@ -144,8 +144,8 @@ def test_an_occlusion_moves_the_end_systolic_points_along_the_line():
 
 
 def test_a_deflation_brings_the_filling_back():
-    occlusion = Occlusion(onset_s=2.0, deflation_s=9.0)
-    beats = run_truth(solve(heart_named("normal"), Conditions(duration_s=20.0, occlusion=occlusion))).beats
+    occlusion = Occlusion(onset_s=2.0, deflation_s=8.0)
+    beats = run_truth(solve(heart_named("normal"), Conditions(duration_s=24.0, occlusion=occlusion))).beats
     assert beats.edv_ml[-1] > 0.95 * beats.edv_ml[0]
     assert not beats.in_ramp[-1]
 
