@@ -1,0 +1,1 @@
+"""The catalogue: what arrived, what was decided, under which protocol and software, and the trail of it all."""
