@@ -56,6 +56,9 @@ def explained(failure: OSError, path: str) -> InputError:
         raise failure
     if failure.errno in {errno.ELOOP, errno.ENOTDIR, errno.ENXIO, errno.EISDIR}:
         return not_a_file(path)
+    if failure.errno == errno.ENOENT:
+        problem = "was there and is gone, or never was"
+        return InputError(problem, file=shown(path), remedy="Look at its name, or send it again.")
     problem = f"cannot be read: {os.strerror(failure.errno or 0).lower()}"
     return InputError(problem, file=shown(path), remedy="Send it again with read permission.")
 

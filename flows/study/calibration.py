@@ -2,13 +2,14 @@
 
 from __future__ import annotations
 
-from typing import Literal, Self
+from typing import Annotated, Literal, Self
 
-from pydantic import Field, model_validator
+from pydantic import Field, WithJsonSchema, model_validator
 
 from flows.study.strict import DeclaredModel, Instant, Label, NotNegative, Positive, fault
 
 VolumeMethod = Literal["saline", "imaging", "stroke-volume-ratio", "two-point", "cuvette", "none"]
+Segment = Annotated[object, WithJsonSchema({"anyOf": [{"type": "integer", "minimum": 1}, {"type": "string"}]})]
 ReferenceSource = Literal["CMR", "echocardiography", "ventriculography", "thermodilution", "Fick", "flow-probe"]
 
 
@@ -99,7 +100,7 @@ class VolumeCalibration(DeclaredModel):
     alpha_vc_sd_ml: NotNegative | None = None
     at: Instant | None = None
     reference: Reference | None = None
-    segments_used: tuple[object, ...] = Field(default=(), strict=False)
+    segments_used: tuple[Segment, ...] = Field(default=(), strict=False)
 
     @model_validator(mode="after")
     def _segments_can_be_found(self) -> Self:

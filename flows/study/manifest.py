@@ -116,7 +116,7 @@ class Manifest(DeclaredModel):
     acquisition: Name
     recorded_at: Instant
     chamber: Chamber
-    runs: Annotated[tuple[ManifestRun, ...], BeforeValidator(not_empty)] = Field(strict=False)
+    runs: Annotated[tuple[ManifestRun, ...], BeforeValidator(not_empty)] = Field(strict=False, json_schema_extra={"minItems": 1})
     session: Name | None = None
     rhythm: Rhythm | None = None
     subject_facts: SubjectFacts = SubjectFacts()

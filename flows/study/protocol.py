@@ -8,11 +8,10 @@ revision of each check or index the study was frozen at, ``loop-closure = 1``.
 from __future__ import annotations
 
 import hashlib
-import importlib
 import tomllib
 from collections.abc import Sequence
 from pathlib import Path
-from typing import TYPE_CHECKING, Annotated, Literal, Self, cast
+from typing import TYPE_CHECKING, Annotated, Literal, Self
 from zoneinfo import ZoneInfo, available_timezones
 
 from pydantic import BeforeValidator, Field, PrivateAttr, field_validator, model_validator
@@ -198,11 +197,6 @@ def bare_protocol(manifest_study: str, site: str) -> Protocol:
     return parse_protocol(text.encode(), file="(no protocol)")
 
 
-def known_checks() -> dict[str, Check]:
-    """Return every check by name."""
-    return {check.name: check for check in cast("Sequence[Check]", importlib.import_module("checks").ALL)}
-
-
 def lock_breaches(protocol: Protocol, revisions: dict[str, int]) -> list[str]:
     """Return, as sentences, where ``revisions`` (of checks and indices by name) differ from the study's lock; empty when none do."""
     return [
@@ -222,7 +216,9 @@ def _refuse_twins(table: str, names: Sequence[str]) -> None:
 def _check_problems(protocol: Protocol, file: str) -> list[InputError]:
     if not protocol.limits and set(protocol.policy.required_checks) <= set(Policy().required_checks):
         return []
-    checks = known_checks()
+    from checks import ALL as CHECKS  # noqa: PLC0415  (the cards pull in numpy and scipy, which most protocols do not need)
+
+    checks = {check.name: check for check in CHECKS}
     problems = [
         InputError("is not a check", file=file, field="policy.required_checks", value=name, remedy=did_you_mean(name, checks))
         for name in protocol.policy.required_checks

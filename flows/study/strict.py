@@ -9,6 +9,7 @@ from types import UnionType
 from typing import Annotated, Any, TypeVar, Union, get_args, get_origin
 
 from pydantic import AfterValidator, BaseModel, BeforeValidator, ConfigDict, Field, ValidationError, model_validator
+from pydantic.config import JsonDict
 from pydantic_core import ErrorDetails, PydanticCustomError
 
 from flows.errors import InputError
@@ -27,6 +28,8 @@ class StrictModel(BaseModel):
 
 class DeclaredModel(StrictModel):
     """A strict model of what a site declares: keys that begin with ``x_`` are the site's own and are passed over."""
+
+    model_config = ConfigDict(json_schema_extra={"patternProperties": {"^x_": {}}})
 
     @model_validator(mode="before")
     @classmethod
@@ -87,9 +90,11 @@ def instant(value: object) -> datetime:
         raise fault(problem, f"{_CLOCK_EXAMPLE}.") from None
 
 
-Name = Annotated[str, AfterValidator(_checked_name)]
-Label = Annotated[str, AfterValidator(_checked_label)]
-FilePath = Annotated[str, AfterValidator(_checked_path)]
+_DOTS: JsonDict = {"enum": [".", ".."]}
+
+Name = Annotated[str, AfterValidator(_checked_name), Field(json_schema_extra={"pattern": r"^[A-Za-z0-9._-]{1,64}$", "not": _DOTS})]
+Label = Annotated[str, AfterValidator(_checked_label), Field(json_schema_extra={"minLength": 1, "maxLength": 200})]
+FilePath = Annotated[str, AfterValidator(_checked_path), Field(json_schema_extra={"pattern": r"^[^/\\:][^\\:]*$"})]
 Instant = Annotated[datetime, BeforeValidator(instant)]
 Positive = Annotated[float, Field(gt=0)]
 NotNegative = Annotated[float, Field(ge=0)]
