@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING, Any
 
 from flows.reports.figures import Data
 from flows.reports.figures_card import card_figure
-from flows.reports.figures_loops import accepted_together, loop_panel, template_shape
+from flows.reports.figures_loops import accepted_together, loop_panel, panel_reach, template_shape
 from flows.reports.figures_preload import preload_filling, preload_loops
 from flows.reports.figures_ribbon import cell_words, ribbon
 from flows.reports.wording import counted, is_number, listing, number, number_ranges, quantity, sentence
@@ -19,7 +19,7 @@ if TYPE_CHECKING:
 
     from flows.reports.reasons import Finding, Reason, Reasons
 
-MOST_PANELS = 24
+MOST_PANELS = 21
 _DEEDS = {
     "reject": "These beats are rejected.",
     "withhold": "What it spoils is withheld.",
@@ -206,7 +206,7 @@ def _loop_group(run: Data, chosen: Sequence[int], reason: Reason, place: int, *,
     return LoopGroup(
         letter=reason.letter if rejected else reason.letter.lower(),
         title=reason.title,
-        where=f"{run['run']}: {counted(len(chosen), 'beat')}",
+        where=f"{run['run']}: {counted(len(chosen), 'beat')}{f', {panel_reach(run)}' if panels else ''}",
         shown=tuple(panels[:MOST_PANELS]),
         folded=tuple(panels[MOST_PANELS:]),
         note=f"For {counted(absent, 'further beat')} no loop was kept." if absent else "",

@@ -1,6 +1,6 @@
 """One beat over its run's own template, with the measured quantity drawn in, as a loop or over its cycle.
 
-Every drawing fills a box of 284 x 232 px with its upper left corner at 0, 0 and returns its parts and what they show in words.
+Every drawing fills a box of 276 x 232 px with its upper left corner at 0, 0 and returns its parts and what they show in words.
 """
 
 from __future__ import annotations
@@ -19,7 +19,7 @@ if TYPE_CHECKING:
 
     Drawing = tuple[list[Markup], str]
 
-WIDTH, HEIGHT = 284, 232
+WIDTH, HEIGHT = 276, 232
 
 
 def drawing_for(check: str) -> Callable[[Data, Data, Data], Drawing]:
@@ -43,7 +43,7 @@ def loop_drawing(finding: Data, run: Data, beat: Data) -> Drawing:
     if finding["check"] in _LEVELS:
         key = _LEVELS[finding["check"]][0]
         (volumes if key.endswith("_ml") else pressures).extend(finite([beat.get(key)]))
-    x, y = scale_over(volumes, 40, WIDTH - 10), scale_over(pressures, HEIGHT - 34, 30)
+    x, y = scale_over(volumes, 40, WIDTH - 10), scale_over(pressures, HEIGHT - 34, 34)
     parts = [*_axes(x, y, "mL", "mmHg"), *_key(beat, has_template=template is not None)]
     if template:
         parts.append(element("path", d=trail(template["volume_ml"], template["pressure_mmhg"], x, y) + "Z", class_="template"))
@@ -63,13 +63,13 @@ def cycle_drawing(finding: Data, run: Data, beat: Data) -> Drawing:
     count = len(loop["pressure_mmhg"])
     x = Scale(0, max(count - 1, 1), 40, WIDTH - 10)
     told = []
-    for key, unit, top, bottom in (("pressure_mmhg", "mmHg", 32, 122), ("volume_ml", "mL", 144, HEIGHT - 20)):
+    for key, unit, top, bottom in (("pressure_mmhg", "mmHg", 34, 120), ("volume_ml", "mL", 146, HEIGHT - 20)):
         series: Sequence[float | None] = loop[key]
         y = scale_over([*series, *(template[key] if template else ())], bottom, top)
         parts += [line((40, bottom), (WIDTH - 10, bottom), "axis"), *_upright_ticks(y, unit, 2)]
         if template:
             parts.append(element("path", d=trail(range(len(template[key])), template[key], x, y), class_="template"))
-        for first, last, kind in _stretches(series):
+        for first, last, kind in _stretches(series, frozen=finding["check"] in _FROZEN):
             left, right = x.at(max(first - 0.5, 0)), x.at(min(last + 0.5, count - 1))
             parts.append(element("rect", x=left, y=top, width=right - left, height=bottom - top, class_=f"stretch {kind}"))
             told.append(f"{'Missing' if kind == 'missing' else 'Unchanging'} {unit} for {(last - first + 1) / count:.0%} of the cycle.")
@@ -97,7 +97,7 @@ def _upright_ticks(y: Scale, unit: str, about: int) -> list[Markup]:
             line((36, y.at(tick)), (40, y.at(tick)), "axis"),
             label(32, y.at(tick) + 4, number(tick), anchor="end", class_="label quiet"),
         ]
-    return [*parts, line((40, y.start_px), (40, y.end_px), "axis"), label(44, y.end_px + 4, unit, class_="label quiet")]
+    return [*parts, line((40, y.start_px), (40, y.end_px), "axis"), label(40, y.end_px - 5, unit, class_="label quiet")]
 
 
 def _key(beat: Data, *, has_template: bool) -> list[Markup]:
@@ -132,7 +132,7 @@ def _measure(finding: Data, beat: Data, loop: Data | None, axes: tuple[Scale, Sc
             shift = -6 if side == "end" else 6
             return [
                 line((x.at(value), y.end_px), (x.at(value), y.start_px), "gauge"),
-                label(x.at(value) + shift, y.end_px + 34, words, anchor=side, class_="label value"),
+                label(x.at(value) + shift, (y.start_px + y.end_px) / 2, words, anchor=side, class_="label value halo"),
             ], words + "."
         lift = 14 if y.at(value) < y.end_px + 14 else -5
         return [
@@ -158,7 +158,7 @@ def _gap(loop: Data, x: Scale, y: Scale) -> tuple[list[Markup], str]:
         line((x.at(first), low), (x.at(last), low), "gauge"),
         element("circle", cx=x.at(first), cy=y.at(first_p), r=4, class_="start"),
         element("circle", cx=x.at(last), cy=y.at(last_p), r=4, class_="stop"),
-        label(middle, low - 8, words, anchor="middle", class_="label value"),
+        label(middle, low - 8, words, anchor="middle", class_="label value halo"),
     ], f"It began at {quantity(first, 'mL')} and ended at {quantity(last, 'mL')}."
 
 
@@ -176,23 +176,24 @@ def _steepest(series: Sequence[float | None], x: Scale, y: Scale, slope: object)
     return [line(start, end, "gauge"), label(WIDTH - 10, y.end_px + 12, words, anchor="end", class_="label value")]
 
 
-def _stretches(series: Sequence[float | None]) -> list[tuple[int, int, str]]:
-    """Return stretches of missing samples, and of four or more samples that do not change, as (first, last, kind)."""
+def _stretches(series: Sequence[float | None], *, frozen: bool) -> list[tuple[int, int, str]]:
+    """Return stretches of missing samples and, if asked, of six or more that do not change, as (first, last, kind)."""
     known = finite(series)
     tiny = 1e-6 * (max(known) - min(known)) if known else 0.0
     kinds = ["missing" if not is_number(value) else "sound" for value in series]
     for index, (earlier, later) in enumerate(pairwise(series)):
-        if is_number(earlier) and is_number(later) and abs(later - earlier) <= tiny:
+        if frozen and is_number(earlier) and is_number(later) and abs(later - earlier) <= tiny:
             kinds[index] = kinds[index + 1] = "frozen"
     found, first = [], 0
     for kind, members in groupby(kinds):
         length = len(list(members))
-        if kind == "missing" or (kind == "frozen" and length >= 4):
+        if kind == "missing" or (kind == "frozen" and length >= 6):
             found.append((first, first + length - 1, kind))
         first += length
     return found
 
 
+_FROZEN = frozenset({"flat-line", "duplicated-samples"})
 _LEVELS = {
     "range-edv": ("edv_ml", "EDV", "mL"),
     "range-edp": ("edp_mmhg", "EDP", "mm[Hg]"),

@@ -16,7 +16,7 @@ if TYPE_CHECKING:
 
     from markupsafe import Markup
 
-CARD_WIDTH = 436
+CARD_WIDTH = 428
 _WITH_TRACE = frozenset(
     {"beats-found", "time-base", "time-gaps", "pressure-clipping", "volume-clipping", "duration", "heart-rate-agreement"}
 )

@@ -10,7 +10,7 @@ from flows.reports.wording import is_number, number
 if TYPE_CHECKING:
     from markupsafe import Markup
 
-SIZE = (190, 22)
+SIZE = (132, 22)
 REACH_PERCENT = 50.0
 
 
@@ -29,7 +29,7 @@ def interval_figure(row: Data, name: str) -> Markup | None:
     fit = [row.get("fit_ci_low"), row.get("fit_ci_high")]
     if is_number(fit[0]) and is_number(fit[1]):
         parts += _bar(axis, sorted(100 * (bound - value) / value for bound in fit if is_number(bound)), middle, "reach fit-reach")
-    parts.append(element("circle", cx=axis.at(0), cy=middle, r=4.5, class_="dot"))
+    parts.append(element("circle", cx=axis.at(0), cy=middle, r=3.5, class_="dot"))
     words = f"From {number(percents[0], 2)} to {number(percents[1], 2)} per cent of the value."
     return figure(name, f"Interval of {row.get('index')}", words, SIZE, *parts)
 

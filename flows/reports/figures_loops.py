@@ -37,6 +37,13 @@ def run_scales(run: Data, left: float, right: float, bottom: float, top: float) 
     return scales[0], scales[1]
 
 
+def panel_reach(run: Data) -> str:
+    """Return in words what the shared axes of a run's panels hold."""
+    x, y = _panel_scales(run)
+    volume, pressure = (f"{number(round(scale.low))} to {number(round(scale.high))}" for scale in (x, y))
+    return f"panes {volume} mL by {pressure} mmHg"
+
+
 def template_shape(run: Data, name: str) -> Markup | None:
     """Return the template's path at panel size, to be placed once on a page and used by every panel; None without a template."""
     template = run.get("template")

@@ -14,8 +14,8 @@ if TYPE_CHECKING:
     from markupsafe import Markup
 
 MOST_LOOPS = 24
-_LOOPS_SIZE = (500, 360)
-_FILLING_SIZE = (420, 360)
+_LOOPS_SIZE = (490, 350)
+_FILLING_SIZE = (400, 350)
 
 
 def preload_loops(run: Data, name: str) -> Markup | None:
@@ -96,7 +96,7 @@ def _line(end: Data, x: Scale, y: Scale) -> tuple[list[Markup], str]:
     words = f"Ees {quantity(slope, 'mm[Hg]/mL')}, V0 {quantity(v0, 'mL')}"
     if x.holds(v0):
         parts.append(element("circle", cx=x.at(v0), cy=y.at(0), r=5, class_="foot"))
-        parts.append(label(min(x.at(v0) + 9, x.end_px - 60), y.at(0) - 8, f"V0 {quantity(v0, 'mL')}", class_="label value halo"))
+        parts.append(label(min(x.at(v0) + 15, x.end_px - 60), y.at(0) - 3, f"V0 {quantity(v0, 'mL')}", class_="label value halo"))
     else:
         parts.append(label(x.start_px + 6, y.at(0) - 8, f"\u2190 V0 {quantity(v0, 'mL')}", class_="label value halo"))
     parts.append(label(x.start_px + 8, y.end_px + 16, f"Ees {quantity(slope, 'mm[Hg]/mL')}", class_="label value halo"))

@@ -14,12 +14,12 @@ if TYPE_CHECKING:
 
     from markupsafe import Markup
 
-WIDTH, HEIGHT = 284, 232
+WIDTH, HEIGHT = 276, 232
 _BASE, _TOP = 168.0, 74.0
 
 
 def rhythm_drawing(_finding: Data, run: Data, beat: Data) -> tuple[list[Markup], str]:
-    """Return a box of 284 x 232 px: beats as stems, the time between them, and a broken stem where the beat was due; and its words."""
+    """Return a box of 276 x 232 px: beats as stems, the time between them, and a broken stem where the beat was due; and its words."""
     beats = [item for item in run.get("beats") or () if is_number(item.get("start_s"))]
     place = next((index for index, item in enumerate(beats) if item["beat"] == beat["beat"]), None)
     if place is None:
@@ -36,7 +36,7 @@ def rhythm_drawing(_finding: Data, run: Data, beat: Data) -> tuple[list[Markup],
     if x.holds(earlier + usual):
         due = x.at(earlier + usual)
         side = "end" if due > WIDTH / 2 else "start"
-        parts += [line((due, _TOP - 14), (due, _BASE), "due"), label(due, _TOP - 20, f"due after {usual:.2f} s", anchor=side)]
+        parts += [line((due, _TOP - 14), (due, _BASE - 34), "due"), label(due, _TOP - 20, f"due after {usual:.2f} s", anchor=side)]
     parts.append(label(10, HEIGHT - 10, f"came after {found:.2f} s, usual {usual:.2f} s", class_="label value"))
     return parts, f"Beat {beat['beat']} came {found:.2f} s after the one before; the median of {len(before)} before is {usual:.2f} s."
 

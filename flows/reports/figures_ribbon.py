@@ -6,6 +6,7 @@ a pale cell with a dot; no verdict is told by colour alone.
 
 from __future__ import annotations
 
+from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
 from flows.reports.figures import Data, element, figure, label, line
@@ -16,8 +17,23 @@ if TYPE_CHECKING:
 
     from flows.reports.reasons import Reasons
 
-CELLS_IN_ROW = 40
-CELL_WIDTH, CELL_HEIGHT, PITCH, ROW_HEIGHT, MARGIN = 19, 24, 22, 38, 62
+MARGIN = 62
+
+
+@dataclass(frozen=True, slots=True)
+class _Layout:
+    """Cells in a row, their size and what lies between them, in px."""
+
+    in_row: int
+    width: int
+    height: int
+    pitch: int
+    row: int
+
+
+_ROOMY = _Layout(in_row=39, width=19, height=24, pitch=22, row=38)
+_DENSE = _Layout(in_row=50, width=15, height=17, pitch=17, row=27)
+_MANY = 156
 
 
 def ribbon(run: Data, reasons: Reasons, name: str) -> Markup | None:
@@ -25,23 +41,28 @@ def ribbon(run: Data, reasons: Reasons, name: str) -> Markup | None:
     beats = run.get("beats") or ()
     if not beats:
         return None
-    rows = -(-len(beats) // CELLS_IN_ROW)
+    layout = _DENSE if len(beats) > _MANY else _ROOMY
+    rows = -(-len(beats) // layout.in_row)
     linked: set[str] = set()
     parts: list[Markup] = []
     for row in range(rows):
-        chunk = beats[row * CELLS_IN_ROW : (row + 1) * CELLS_IN_ROW]
-        top = 2 + row * ROW_HEIGHT
+        chunk = beats[row * layout.in_row : (row + 1) * layout.in_row]
+        top = 2 + row * layout.row
         start = chunk[0].get("start_s")
-        parts.append(label(MARGIN - 10, top + 16, f"{start:.0f} s" if is_number(start) else "", anchor="end", class_="label quiet"))
+        parts.append(
+            label(
+                MARGIN - 10, top + layout.height / 2 + 4, f"{start:.0f} s" if is_number(start) else "", anchor="end", class_="label quiet"
+            )
+        )
         for place, beat in enumerate(chunk):
-            parts.append(_cell(run, beat, reasons, (MARGIN + place * PITCH, top), linked))
+            parts.append(_cell(run, beat, reasons, (MARGIN + place * layout.pitch, top), layout, linked))
     accepted = sum(beat.get("verdict") == "accepted" for beat in beats)
     counts = f"{counted(len(beats), 'beat')}, {accepted} accepted and {len(beats) - accepted} rejected"
     return figure(
         name,
         f"Beats of {run['run']} in time order",
         f"{counts}; every cell tells its beat and its reasons.",
-        (MARGIN + min(len(beats), CELLS_IN_ROW) * PITCH + 2, rows * ROW_HEIGHT),
+        (MARGIN + min(len(beats), layout.in_row) * layout.pitch + 2, rows * layout.row),
         *parts,
         role="group",
     )
@@ -58,7 +79,7 @@ def cell_words(run: Data, beat: Data, reasons: Reasons) -> str:
     return words + ("; in the preload window" if beat.get("in_window") else "")
 
 
-def _cell(run: Data, beat: Data, reasons: Reasons, place: tuple[float, float], linked: set[str]) -> Markup:
+def _cell(run: Data, beat: Data, reasons: Reasons, place: tuple[float, float], layout: _Layout, linked: set[str]) -> Markup:
     left, top = place
     mark = reasons.mark(str(run["run"]), int(beat["beat"]))
     rejected = beat.get("verdict") != "accepted"
@@ -68,11 +89,12 @@ def _cell(run: Data, beat: Data, reasons: Reasons, place: tuple[float, float], l
     sign = (reasons.letter_of(check) if rejected else reasons.letter_of(check).lower()) if check else "?" if rejected else "\u00b7"
     parts = [
         element("title", words),
-        element("rect", x=left, y=top, width=CELL_WIDTH, height=CELL_HEIGHT, rx=2, class_="cell"),
-        label(left + CELL_WIDTH / 2, top + 16.5, sign, anchor="middle", class_="sign"),
+        element("rect", x=left, y=top, width=layout.width, height=layout.height, rx=2, class_="cell"),
+        label(left + layout.width / 2, top + layout.height / 2 + 4.5, sign, anchor="middle", class_="sign"),
     ]
     if beat.get("in_window"):
-        parts.append(line((left - 1.5, top + CELL_HEIGHT + 4), (left + PITCH - 1.5, top + CELL_HEIGHT + 4), "window-line"))
+        below = top + layout.height + 4
+        parts.append(line((left - 1.5, below), (left + layout.pitch - 1.5, below), "window-line"))
     if check is None or not reasons.by_check[check].findings:
         return element("g", *parts, class_=f"beat {kind}", role="img", aria_label=words)
     tab = "-1" if check in linked else None
@@ -84,16 +106,16 @@ def legend_cell(kind: str, sign: str) -> Markup:
     """Return one cell for the legend, drawn like those of the ribbon (``kind``: accepted, flagged, rejected or window)."""
     shown = "accepted" if kind == "window" else kind
     parts = [
-        element("rect", x=1, y=1, width=CELL_WIDTH, height=CELL_HEIGHT, rx=2, class_="cell"),
-        label(1 + CELL_WIDTH / 2, 17.5, sign, anchor="middle", class_="sign"),
+        element("rect", x=1, y=1, width=_ROOMY.width, height=_ROOMY.height, rx=2, class_="cell"),
+        label(1 + _ROOMY.width / 2, 17.5, sign, anchor="middle", class_="sign"),
     ]
     if kind == "window":
-        parts.append(line((0, CELL_HEIGHT + 5), (CELL_WIDTH + 2, CELL_HEIGHT + 5), "window-line"))
+        parts.append(line((0, _ROOMY.height + 5), (_ROOMY.width + 2, _ROOMY.height + 5), "window-line"))
     return element(
         "svg",
         element("g", *parts, class_=f"beat {shown}"),
-        width=CELL_WIDTH + 2,
-        height=CELL_HEIGHT + 8,
-        viewBox=f"0 0 {CELL_WIDTH + 2} {CELL_HEIGHT + 8}",
+        width=_ROOMY.width + 2,
+        height=_ROOMY.height + 8,
+        viewBox=f"0 0 {_ROOMY.width + 2} {_ROOMY.height + 8}",
         aria_hidden="true",
     )

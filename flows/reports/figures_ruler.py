@@ -15,6 +15,7 @@ _SIGNS = {
     "suspect_below": "suspect below",
     "fail_below": "fail below",
 }
+_SHORT = {name: words.replace("above", ">").replace("below", "<") for name, words in _SIGNS.items()}
 
 
 def limits_of(finding: Data) -> dict[str, float]:
@@ -44,7 +45,7 @@ def ruler(finding: Data, left: float, top: float, height: float) -> Markup:
     """Return an upright ruler with its axis at ``left``: about 140 px wide, ``height`` px high."""
     limits = limits_of(finding)
     scale = _scale(finding, limits, top + height - 8, top + 26)
-    parts = [label(left - 6, top + 8, _head(finding), class_="label quiet"), *_bands(limits, scale, left, upright=True)]
+    parts = [label(left - 6, top + 13, _head(finding), class_="label quiet"), *_bands(limits, scale, left, upright=True)]
     value = finding.get("value")
     entries = [(number_, name) for name, number_ in limits.items()]
     if is_number(value):
@@ -52,13 +53,13 @@ def ruler(finding: Data, left: float, top: float, height: float) -> Markup:
     places = spread([scale.at(number_) for number_, _ in entries], 17, top + 24, top + height - 2)
     for (number_, name), place in zip(entries, places, strict=True):
         spot = scale.at(number_)
-        parts.append(element("path", d=f"M{left + 8:.1f} {spot:.1f}L{left + 20:.1f} {place:.1f}", class_="leader"))
+        parts.append(element("path", d=f"M{left + 8:.1f} {spot:.1f}L{left + 17:.1f} {place:.1f}", class_="leader"))
         if name == "value":
             parts.append(_diamond(left, spot))
-            parts.append(label(left + 24, place + 5, number(number_), class_="label value"))
+            parts.append(label(left + 20, place + 5, number(number_), class_="label value"))
         else:
             parts.append(line((left - 8, spot), (left + 8, spot), f"tick {name.split('_')[0]}"))
-            parts.append(label(left + 24, place + 4, f"{_SIGNS[name]} {number(number_)}"))
+            parts.append(label(left + 20, place + 4, f"{_SHORT[name]} {number(number_)}"))
     return Markup("").join(parts)
 
 
@@ -88,7 +89,7 @@ def flat_ruler(finding: Data, width: float) -> Markup:
 
 def _head(finding: Data) -> str:
     unit = unit_words(finding.get("unit"))
-    return f"in {unit}" if unit and not unit.startswith("per ") else unit or "as a ratio"
+    return f"in {unit}" if unit and not unit.startswith("per ") else unit or "measured"
 
 
 def _scale(finding: Data, limits: Mapping[str, float], start: float, end: float) -> Scale:

@@ -160,7 +160,7 @@ def _expected_cell(row: ExpectedRow | None, by_visit: Mapping[tuple[str, str, st
         return ExpectedCell("missing", row.what or "nothing came", "")
     worst = worst_first(acquisitions)[0] if acquisitions else None
     if worst is None:
-        return ExpectedCell("received", row.what, "")
+        return ExpectedCell("received", row.what or "received", "")
     counts = Counter(item.verdict for item in acquisitions)
     words = worst.verdict if len(acquisitions) == 1 else ", ".join(f"{count} {verdict}" for verdict, count in sorted(counts.items()))
     return ExpectedCell(worst.verdict, words, worst.page)

@@ -19,7 +19,7 @@ from flows.reports.figures_ribbon import legend_cell
 from flows.reports.figures_sites import status_sign
 from flows.reports.reasons import reasons_of
 from flows.reports.views import acquisition_page
-from flows.reports.wording import counted, instant, listing, number, number_ranges, split_reasons, visible
+from flows.reports.wording import counted, instant, listing, number, title_from_name, visible
 
 if TYPE_CHECKING:
     from collections.abc import Iterable
@@ -27,7 +27,7 @@ if TYPE_CHECKING:
     from flows.reports.views import AcquisitionRow, AcquisitionView, NightView
 
 CAUTION = "For research and quality assurance only. Not for diagnosis or treatment: licensed clinicians and the rules of the place decide."
-MOST_REASONS = 6
+MOST_REASONS = 5
 _HERE = Path(__file__).parent
 _DECISIONS = {
     "accepted": "Take it",
@@ -82,22 +82,25 @@ def acquisition_html(night: NightView, view: AcquisitionView, order: tuple[Acqui
     reasons = reasons_of(view)
     runs = acquisition_sections.runs_of(view.evidence)
     indices = view.indices or view.evidence.get("indices") or ()
+    decisive, remarks = (acquisition_sections.cards(runs, chosen) for chosen in (reasons.decisive, reasons.remarks))
     verdict = str(view.row.get("verdict") or "")
     stage_order = dict.fromkeys(str(run["stage"]) for run in runs if run.get("stage"))
     return _render(
         "acquisition.html",
         night=night,
         root="../",
-        facts=view.evidence.get("acquisition") or {},
+        calibration=(view.evidence.get("acquisition") or {}).get("calibration") or (),
         row=view.row,
         verdict=verdict,
         decision=_DECISIONS.get(verdict, verdict),
         counts=_counts(view, indices),
+        kept=_kept(view),
         reasons=reasons,
         most_reasons=MOST_REASONS,
         ribbons=acquisition_sections.ribbon_sections(runs, reasons),
-        decisive_cards=acquisition_sections.cards(runs, reasons.decisive),
-        remark_cards=acquisition_sections.cards(runs, reasons.remarks),
+        decisive_cards=decisive,
+        remark_cards=remarks,
+        weight=_weight(len(decisive), len(remarks)),
         shapes=shapes(acquisition_sections.template_shapes(runs)),
         rejected_loops=acquisition_sections.loop_groups(runs, reasons, rejected=True),
         flagged_loops=acquisition_sections.loop_groups(runs, reasons, rejected=False),
@@ -115,9 +118,19 @@ def acquisition_html(night: NightView, view: AcquisitionView, order: tuple[Acqui
 
 def _counts(view: AcquisitionView, indices: Iterable[Any]) -> str:
     rows = list(indices)
-    beats, accepted = view.row.get("beats") or 0, view.row.get("beats_accepted") or 0
     published, withheld = index_sections.count_status(rows, "published"), index_sections.count_status(rows, "withheld")
-    return f"{accepted} of {counted(beats, 'beat')} accepted. {counted(published, 'index')} published, {withheld} withheld."
+    return f"{_kept(view)}. {counted(published, 'index')} published, {withheld} withheld."
+
+
+def _kept(view: AcquisitionView) -> str:
+    beats = view.row.get("beats") or 0
+    return f"{view.row.get('beats_accepted') or 0} of {counted(beats, 'beat')} accepted" if beats else "No beat was found"
+
+
+def _weight(decisive: int, remarks: int) -> str:
+    parts = [f"{counted(decisive, 'finding')} {'decides' if decisive == 1 else 'decide'}"] if decisive else []
+    parts += [f"{remarks if parts else counted(remarks, 'finding')} only flagged"] if remarks else []
+    return ", ".join(parts)
 
 
 @cache
@@ -131,7 +144,7 @@ def _environment() -> Environment:
         keep_trailing_newline=True,
         finalize=visible,
     )
-    environment.filters.update(counted=counted, instant=instant, number=number, number_ranges=number_ranges, split_reasons=split_reasons)
+    environment.filters.update(counted=counted, instant=instant, number=number, title_from_name=title_from_name)
     environment.globals.update(status_sign=status_sign, legend_cell=legend_cell, interval_axis=interval_axis, caution=CAUTION)
     return environment
 

@@ -6,7 +6,7 @@ The letter stands in the ribbon's cells, on the evidence cards and over the loop
 from __future__ import annotations
 
 from collections import Counter
-from collections.abc import Mapping, Sequence
+from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
 
@@ -93,7 +93,7 @@ def reasons_of(view: AcquisitionView) -> Reasons:
     for check in sorted(set(named) - set(groups)):
         groups[check] = []
     lost_runs = _lost_runs(runs)
-    withheld = {str(row.get("index")) for row in view.indices if row.get("status") == "withheld"}
+    withheld = _withheld_by(view.indices or evidence.get("indices") or (), groups)
     ranked = sorted(groups.items(), key=lambda item: not (_is_decisive(item[1]) or item[0] in named))
     ordered = tuple(
         Reason(
@@ -153,17 +153,32 @@ def _place(finding: Finding) -> str:
     return f"{run} (beat{'' if len(beats) == 1 else 's'} {number_ranges(beats, 5)})"
 
 
-def _costs(check: str, group: Sequence[Finding], rejected_beats: int, lost_runs: Mapping[str, int], withheld: set[str]) -> str:
+def _withheld_by(rows: Iterable[Mapping[str, Any]], groups: Mapping[str, Sequence[Finding]]) -> dict[str, set[str]]:
+    """Return, for each withheld index, the checks its recorded reasons name; where they name none, every check stays possible."""
+    withheld: dict[str, set[str]] = {}
+    for row in rows:
+        if row.get("status") == "withheld":
+            told = str(row.get("reason") or "")
+            named = {
+                check for check, group in groups.items() if check in told or any(str(item.get("reason") or check) in told for item in group)
+            }
+            withheld.setdefault(str(row.get("index")), set()).update(named or groups)
+    return withheld
+
+
+def _costs(
+    check: str, group: Sequence[Finding], rejected_beats: int, lost_runs: Mapping[str, int], withheld: Mapping[str, set[str]]
+) -> str:
     """Return what the check took away, in one sentence."""
     parts = []
     if lost_runs:
-        whole = [f"{run} ({counted(beats, 'beat')})" for run, beats in lost_runs.items()]
+        whole = [f"{run} ({counted(beats, 'beat')})" if beats else run for run, beats in lost_runs.items()]
         parts.append(f"the whole of {listing(whole, 3)}")
     elif rejected_beats:
         parts.append(counted(rejected_beats, "beat"))
     failed = [finding for finding in group if finding.get("verdict") == "fail" or finding.get("action") == "withhold"]
     spoiled = {str(index) for finding in failed for index in finding.get("spoils") or ()}
-    gone = sorted(spoiled & withheld if withheld else spoiled)
+    gone = sorted(index for index in spoiled if not withheld or check in withheld.get(index, ()))
     if gone:
         parts.append(f"{counted(len(gone), 'index')}: {listing(gone, 8)}")
     if parts:
