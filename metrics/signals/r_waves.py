@@ -17,6 +17,10 @@ INTEGRAL_S = 0.150
 REFRACTORY_S = 0.200
 T_WAVE_S = 0.360
 SEARCH_BACK = 1.66
+LEARNING_S = 2.0
+SURGE = 4.0
+"""One peak counts for at most this many running signal peaks (twice the amplitude), so that an artefact does not deafen the detector to
+the beats after it; house default."""
 
 
 def thresholds(signal_peak: float, noise_peak: float) -> tuple[float, float]:
@@ -56,8 +60,7 @@ def r_waves(ecg_mv: FloatArray, sampling_rate_hz: float) -> IntArray:
 
 def _above_thresholds(energy: FloatArray, slope: FloatArray, candidates: IntArray, sampling_rate_hz: float) -> IntArray:
     """Walk through the candidate peaks with running thresholds, T-wave test and search-back."""
-    learning = energy[: round(2.0 * sampling_rate_hz)]
-    signal_peak, noise_peak = float(np.max(learning)) * 0.5, float(np.mean(learning)) * 0.5
+    signal_peak, noise_peak = _first_levels(energy, sampling_rate_hz)
     found: list[int] = []
     intervals: list[int] = []
     half = max(1, round(0.5 * INTEGRAL_S * sampling_rate_hz))
@@ -71,7 +74,7 @@ def _above_thresholds(energy: FloatArray, slope: FloatArray, candidates: IntArra
                 best = max(missed, key=lambda c: float(energy[c]))
                 intervals.append(best - found[-1])
                 found.append(best)
-                signal_peak = running_peak(signal_peak, float(energy[best]), 0.25)
+                signal_peak = running_peak(signal_peak, min(float(energy[best]), SURGE * signal_peak), 0.25)
         first, _ = thresholds(signal_peak, noise_peak)
         peak = float(energy[candidate])
         gap = candidate - found[-1] if found else None
@@ -80,12 +83,23 @@ def _above_thresholds(energy: FloatArray, slope: FloatArray, candidates: IntArra
             if gap is not None:
                 intervals.append(gap)
             found.append(candidate)
-            signal_peak = running_peak(signal_peak, peak)
+            signal_peak = running_peak(signal_peak, min(peak, SURGE * signal_peak))
             passed_over.clear()
         else:
             noise_peak = running_peak(noise_peak, peak)
             passed_over.append(candidate)
     return np.array(sorted(set(found)), dtype=np.int64)
+
+
+def _first_levels(energy: FloatArray, sampling_rate_hz: float) -> tuple[float, float]:
+    """Return the running peaks to begin with: half the usual largest and mean energy of 2 s.
+
+    Pan and Tompkins learn from the first 2 s; a whole run is at hand, so an artefact in those need not set the level. The upper quartile
+    of the windows, because a lead may be off for some of them.
+    """
+    length = round(LEARNING_S * sampling_rate_hz)
+    windows = energy[: energy.size // length * length].reshape(-1, length)
+    return 0.5 * float(np.quantile(windows.max(axis=1), 0.75)), 0.5 * float(np.quantile(windows.mean(axis=1), 0.75))
 
 
 def _apexes(band: FloatArray, around: IntArray, sampling_rate_hz: float) -> IntArray:
