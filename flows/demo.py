@@ -48,7 +48,7 @@ def run_demo(folder: Path) -> None:
     """
     from flows.nightly import run_night  # noqa: PLC0415  (starts the orchestration)
 
-    began = time.monotonic()
+    began, folder = time.monotonic(), folder.resolve()
     put_in = make_study(folder)
     run_night(folder)
     latest = folder / "published" / "latest"

@@ -119,8 +119,11 @@ def fluid_filled(acquisition: Acquisition, natural_hz: float) -> Injected:
     omega = 2.0 * np.pi * natural_hz
     for run, columns in acquisition.columns.items():
         top, bottom = bilinear([omega**2], [1.0, 0.4 * omega, omega**2], fs=acquisition.recipe.rate_hz)
-        first = columns[PRESSURE][0]
-        acquisition = with_columns(acquisition, run, {PRESSURE: lfilter(top, bottom, columns[PRESSURE] - first) + first})
+        # The line was filled before the run began: an odd continuation backwards keeps it from starting at rest.
+        pressure = columns[PRESSURE]
+        before = 2.0 * pressure[0] - pressure[round(0.5 * acquisition.recipe.rate_hz) : 0 : -1]
+        led = lfilter(top, bottom, np.concatenate([before, pressure]) - before[0]) + before[0]
+        acquisition = with_columns(acquisition, run, {PRESSURE: led[before.size :]})
 
     def change(manifest: Facts) -> None:
         manifest["sensors"]["pressure"]["kind"] = "fluid-filled"
