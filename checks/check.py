@@ -134,17 +134,15 @@ def judge(check: Check, subject: object, limits: Limits, count: int = 1) -> Judg
     """Return the verdicts of a check on a subject with ``count`` members (1, or the number of beats).
 
     This is the one place where a number meets a limit: beyond a fail bound is fail, beyond a suspect bound suspect, NaN not evaluated.
-    A measure that raises gives not evaluated for every member, with what it raised in ``trouble``.
+    A measure that raises, or whose arrays do not fit the members, gives not evaluated for every member, with the error in ``trouble``.
     """
     nothing = np.full(count, np.nan)
     try:
         found = check.measure(subject)
+        value, at_s, borne_out = _spread(found, count)
     except Exception as error:  # noqa: BLE001  (whatever a measure raises must not let data through, nor stop the other checks)
         verdicts = (Verdict.NOT_EVALUATED,) * count
         return Judged(check, nothing, verdicts, nothing.copy(), nothing.copy(), f"{type(error).__name__}: {error}")
-    value = np.broadcast_to(np.asarray(found.value, dtype=np.float64), (count,)).copy()
-    at_s = nothing.copy() if found.at_s is None else np.broadcast_to(np.asarray(found.at_s, dtype=np.float64), (count,)).copy()
-    borne_out = np.ones(count, dtype=bool) if found.corroborated is None else np.broadcast_to(found.corroborated, (count,))
     failed, fail_bound = _beyond(value, limits.fail_above, limits.fail_below)
     doubtful, suspect_bound = _beyond(value, limits.suspect_above, limits.suspect_below)
     fails = failed & borne_out
@@ -155,6 +153,14 @@ def judge(check: Check, subject: object, limits: Limits, count: int = 1) -> Judg
         for v, f, s in zip(value.tolist(), fails.tolist(), suspects.tolist(), strict=True)
     )
     return Judged(check, value, verdicts, limit, at_s)
+
+
+def _spread(found: Measured, count: int) -> tuple[FloatArray, FloatArray, BoolArray]:
+    """Return value, instant and corroboration for each member, shape (count,); raises ValueError where they do not fit."""
+    value = np.broadcast_to(np.asarray(found.value, dtype=np.float64), (count,)).copy()
+    at_s = np.full(count, np.nan) if found.at_s is None else np.broadcast_to(np.asarray(found.at_s, dtype=np.float64), (count,)).copy()
+    borne_out = np.ones(count, dtype=bool) if found.corroborated is None else np.broadcast_to(found.corroborated, (count,))
+    return value, at_s, borne_out
 
 
 def _beyond(value: FloatArray, above: float | None, below: float | None) -> tuple[BoolArray, FloatArray]:
