@@ -16,17 +16,22 @@ from metrics.signals.facts import PressureCalibration
 
 
 def drift_mmhg(calibration: PressureCalibration) -> float:
-    """Return how far apart the zero readings lie once through the two-point line, in mmHg; NaN with fewer than two.
+    """Return how far apart the zero readings between two re-zeros lie once through the two-point line, in mmHg.
+
+    NaN with fewer than two. What a re-zero takes away is no drift; readings without a clock are compared as a whole.
 
     >>> from metrics.signals.facts import ZeroReading
     >>> drift_mmhg(PressureCalibration(zeros=(ZeroReading(0.5, 0.0), ZeroReading(3.5, 3600.0))))
     3.0
     """
-    if len(calibration.zeros) < 2:
-        return float("nan")
+    readings = np.array([zero.mmhg for zero in calibration.zeros])
+    at_s = np.array([zero.at_s for zero in calibration.zeros], dtype=np.float64)
+    piece = np.zeros(readings.size, dtype=np.int64)
+    if np.isfinite(at_s).all():
+        piece = np.searchsorted(np.sort(np.array(calibration.re_zeros_s, dtype=np.float64)), at_s, side="right")
+    spans = [float(np.ptp(readings[piece == one])) for one in np.unique(piece) if np.sum(piece == one) >= 2]
     k, _ = two_point_line(calibration.points)
-    readings = [zero.mmhg for zero in calibration.zeros]
-    return (max(readings) - min(readings)) / abs(k)
+    return max(spans) / abs(k) if spans else float("nan")
 
 
 def zero_drift(subject: AcquisitionSubject) -> Measured:
