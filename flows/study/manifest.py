@@ -200,7 +200,7 @@ def _with_profile(data: dict[str, object], protocol: Protocol) -> dict[str, obje
     known = protocol.sites.get(site) if isinstance(site, str) else None
     if known is None or known.profile is None or not isinstance(runs, list):
         return data
-    channels = known.profile.model_dump(exclude_none=True, exclude_defaults=True)
+    channels = known.profile.model_dump(exclude_unset=True)
     filled = [run | {"channels": channels} if isinstance(run, dict) and "channels" not in run else run for run in runs]
     return data | {"runs": filled}
 
