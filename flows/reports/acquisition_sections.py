@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING, Any
 
 from flows.reports.figures import Data
 from flows.reports.figures_card import card_figure
-from flows.reports.figures_loops import accepted_together, loop_panel, panel_reach, template_shape
+from flows.reports.figures_loops import accepted_together, loop_panel, panel_reach, panel_scales, template_shape
 from flows.reports.figures_preload import preload_filling, preload_loops
 from flows.reports.figures_ribbon import cell_words, ribbon
 from flows.reports.wording import counted, is_number, listing, number, number_ranges, quantity, sentence
@@ -175,6 +175,12 @@ def loop_groups(runs: Sequence[Data], reasons: Reasons, *, rejected: bool) -> tu
     return tuple(groups)
 
 
+def panel_reaches(runs: Sequence[Data], groups: Sequence[LoopGroup]) -> str:
+    """Return, for every run that has a group, what the axes its panels share hold."""
+    shown = [run for run in runs if any(group.where.startswith(f"{run['run']}: ") for group in groups)]
+    return "; ".join(f"{run['run']} {panel_reach(run)}" for run in shown)
+
+
 def _beats_under(run: Data, reasons: Reasons, check: str, *, rejected: bool) -> list[int]:
     chosen = []
     for beat in run.get("beats") or ():
@@ -190,9 +196,10 @@ def _loop_group(run: Data, chosen: Sequence[int], reason: Reason, place: int, *,
     loops = {int(loop["beat"]): loop for loop in run.get("loops") or ()}
     template = f"template-{place}" if run.get("template") else None
     verdict = "rejected" if rejected else "flagged"
+    axes = panel_scales(run)
     panels = [
         loop_panel(
-            run,
+            axes,
             loops[beat],
             f"Beat {beat} of {run['run']}, {verdict} for {reason.title.lower()}",
             f"loop-{place}-{beat}",
@@ -206,7 +213,7 @@ def _loop_group(run: Data, chosen: Sequence[int], reason: Reason, place: int, *,
     return LoopGroup(
         letter=reason.letter if rejected else reason.letter.lower(),
         title=reason.title,
-        where=f"{run['run']}: {counted(len(chosen), 'beat')}{f', {panel_reach(run)}' if panels else ''}",
+        where=f"{run['run']}: {counted(len(chosen), 'beat')}",
         shown=tuple(panels[:MOST_PANELS]),
         folded=tuple(panels[MOST_PANELS:]),
         note=f"For {counted(absent, 'further beat')} no loop was kept." if absent else "",

@@ -39,9 +39,9 @@ def run_scales(run: Data, left: float, right: float, bottom: float, top: float) 
 
 def panel_reach(run: Data) -> str:
     """Return in words what the shared axes of a run's panels hold."""
-    x, y = _panel_scales(run)
+    x, y = panel_scales(run)
     volume, pressure = (f"{number(round(scale.low))} to {number(round(scale.high))}" for scale in (x, y))
-    return f"panes {volume} mL by {pressure} mmHg"
+    return f"{volume} mL by {pressure} mmHg"
 
 
 def template_shape(run: Data, name: str) -> Markup | None:
@@ -49,14 +49,17 @@ def template_shape(run: Data, name: str) -> Markup | None:
     template = run.get("template")
     if not template:
         return None
-    x, y = _panel_scales(run)
+    x, y = panel_scales(run)
     outline = trail(template["volume_ml"], template["pressure_mmhg"], x, y) + "Z"
     return element("path", id=name, d=outline, class_="template small")
 
 
-def loop_panel(run: Data, loop: Data, words: str, name: str, template_name: str | None, *, kept: bool) -> Markup:
-    """Return the panel of one beat, 118 x 108 px; what leaves the shared axes is cut off and the panel says so."""
-    x, y = _panel_scales(run)
+def loop_panel(axes: tuple[Scale, Scale], loop: Data, words: str, name: str, template_name: str | None, *, kept: bool) -> Markup:
+    """Return the panel of one beat, 118 x 108 px; what leaves the shared axes is cut off and the panel says so.
+
+    ``axes`` are the run's `panel_scales`, ``template_name`` is the id of its template's shape.
+    """
+    x, y = axes
     width, height = PANEL
     outside = [value for scale, key in ((x, "volume_ml"), (y, "pressure_mmhg")) for value in finite(loop[key]) if not scale.holds(value)]
     volume, pressure = finite(loop["volume_ml"]), finite(loop["pressure_mmhg"])
@@ -109,5 +112,6 @@ def shapes(parts: Sequence[Markup]) -> Markup:
     return element("svg", element("defs", joined(parts)), width=0, height=0, class_="shapes", aria_hidden="true")
 
 
-def _panel_scales(run: Data) -> tuple[Scale, Scale]:
+def panel_scales(run: Data) -> tuple[Scale, Scale]:
+    """Return the axes of a run's panels, to be worked out once a run."""
     return run_scales(run, 5, PANEL[0] - 5, PANEL[1] - 23, 5)

@@ -49,7 +49,7 @@ def status_sign(status: str) -> Markup:
     return element("svg", package_cell(status), class_="status-sign", width=19, height=19, viewBox="0 0 19 19", aria_hidden="true")
 
 
-def share_bar(value: int, most: int, width: int = 120) -> Markup:
+def share_bar(value: int, most: int, width: int = 84) -> Markup:
     """Return a plain bar for a count; the number stands beside it in the table."""
     length = width * value / most if most else 0.0
     bar = element("rect", x=0, y=3, width=float(length), height=8, class_="share")

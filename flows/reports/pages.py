@@ -83,6 +83,7 @@ def acquisition_html(night: NightView, view: AcquisitionView, order: tuple[Acqui
     runs = acquisition_sections.runs_of(view.evidence)
     indices = view.indices or view.evidence.get("indices") or ()
     decisive, remarks = (acquisition_sections.cards(runs, chosen) for chosen in (reasons.decisive, reasons.remarks))
+    rejected_loops = acquisition_sections.loop_groups(runs, reasons, rejected=True)
     verdict = str(view.row.get("verdict") or "")
     stage_order = dict.fromkeys(str(run["stage"]) for run in runs if run.get("stage"))
     return _render(
@@ -102,7 +103,8 @@ def acquisition_html(night: NightView, view: AcquisitionView, order: tuple[Acqui
         remark_cards=remarks,
         weight=_weight(len(decisive), len(remarks)),
         shapes=shapes(acquisition_sections.template_shapes(runs)),
-        rejected_loops=acquisition_sections.loop_groups(runs, reasons, rejected=True),
+        rejected_loops=rejected_loops,
+        reaches=acquisition_sections.panel_reaches(runs, rejected_loops),
         flagged_loops=acquisition_sections.loop_groups(runs, reasons, rejected=False),
         accepted_loops=acquisition_sections.accepted_drawings(runs),
         preload=acquisition_sections.preload_sections(runs),

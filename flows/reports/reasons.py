@@ -183,6 +183,8 @@ def _costs(
         parts.append(f"{counted(len(gone), 'index')}: {listing(gone, 8)}")
     if parts:
         return sentence(" and ".join(parts))
+    if any(finding.get("verdict") == "fail" for finding in group) and not any(finding.get("action") == "query" for finding in group):
+        return "Nothing more: what it reaches is kept by other runs, or lost already."
     if any(finding.get("action") == "correct" for finding in group):
         return "Nothing is lost: it was corrected, and the interval carries it."
     if any(finding.get("action") == "query" for finding in group):

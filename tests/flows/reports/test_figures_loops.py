@@ -1,7 +1,7 @@
 import pytest
 
 from flows.reports.acquisition_sections import MOST_PANELS, loop_groups
-from flows.reports.figures_loops import accepted_together, loop_panel, panel_reach, run_scales, template_shape
+from flows.reports.figures_loops import accepted_together, loop_panel, panel_reach, panel_scales, run_scales, template_shape
 from flows.reports.figures_preload import preload_filling, preload_loops
 from flows.reports.reasons import reasons_of
 from tests.flows.reports.made_evidence import finding, long, make_run, make_view, queried, unreadable_run
@@ -31,7 +31,7 @@ def test_one_wild_beat_does_not_shrink_all_others_and_is_said_to_be_cut_off():
     run["loops"][3]["pressure_mmhg"][20] = 5000.0
     _, pressure = run_scales(run, 0, 100, 100, 0)
     assert pressure.high < 300
-    wild, calm = (str(loop_panel(run, run["loops"][place], "Beat", "one", "template-1", kept=False)) for place in (3, 4))
+    wild, calm = (str(loop_panel(panel_scales(run), run["loops"][place], "Beat", "one", "template-1", kept=False)) for place in (3, 4))
     assert "cut off" in wild
     assert "cut off" not in calm
     assert 'href="#template-1"' in calm
@@ -44,7 +44,7 @@ def test_a_run_without_template_or_loops_has_axes_all_the_same():
     assert pressure.high > pressure.low
     assert template_shape(run, "template-1") is None
     assert accepted_together(run, "one") is None
-    assert panel_reach(run) == "panes 0 to 1 mL by 0 to 1 mmHg"
+    assert panel_reach(run) == "0 to 1 mL by 0 to 1 mmHg"
 
 
 def test_accepted_loops_are_drawn_together_and_thinned():
