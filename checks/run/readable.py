@@ -9,7 +9,12 @@ from checks.subject import RunSubject
 
 
 def is_unreadable(subject: RunSubject) -> Measured:
-    """Return 1 for a run without signals for another reason than its time base, else 0; shape ()."""
+    """Return 1 for a run without signals for another reason than its time base, else 0; shape ().
+
+    A saline run has no pressure and is never cut into beats: there it is enough that its file was read.
+    """
+    if subject.facts.kind == "saline":
+        return single(subject.recording is None)
     return single(subject.signals is None and not backward_steps(subject) > 0.0)
 
 
@@ -23,5 +28,6 @@ CHECK = Check(
     reason="the run cannot be used: {trouble}",
     remedy="correct the file or its entry in acquisition.json and send the package again",
     spoils=EVERYTHING,
+    run_kinds=("steady", "preload-reduction", "saline"),
     is_fact=True,
 )

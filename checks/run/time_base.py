@@ -13,9 +13,12 @@ from checks.subject import RunSubject
 
 
 def backward_steps(subject: RunSubject) -> float:
-    """Return how many of the pressure channel's time stamps lie before the one above them; 0 without time stamps."""
+    """Return how many of the pressure channel's time stamps lie before the one above them.
+
+    0 where the declared rate is the time base, NaN where no pressure was read.
+    """
     if subject.recording is None or "pressure" not in subject.recording.channels:
-        return 0.0
+        return float("nan")
     time_s = subject.recording.channels["pressure"].time_s
     return 0.0 if time_s is None else float(np.sum(np.diff(time_s) < 0.0))
 
@@ -24,7 +27,7 @@ def time_backwards(subject: RunSubject) -> Measured:
     """Return the count of backward steps, and when the first occurs; shape ()."""
     steps = backward_steps(subject)
     at_s = np.nan
-    if steps and subject.recording is not None:
+    if steps > 0.0 and subject.recording is not None:
         time_s = subject.recording.channels["pressure"].time_s
         if time_s is not None:
             at_s = float(time_s[int(np.argmax(np.diff(time_s) < 0.0))])
