@@ -37,9 +37,10 @@ _ONE_THREAD = ("OMP_NUM_THREADS", "OPENBLAS_NUM_THREADS", "MKL_NUM_THREADS")
 
 @dataclass(frozen=True)
 class Job:
-    """One package to assess: its site, the sum of its content, and where the bytes of each payload file lie."""
+    """One package to assess: its site, its folder's name, the sum of its content, and where the bytes of each payload file lie."""
 
     site: str
+    package: str
     package_sha256: str
     files: Mapping[str, Path]
     protocol: Protocol

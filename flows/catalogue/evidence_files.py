@@ -29,11 +29,16 @@ def keep(store: Path, key: str, content: bytes) -> str:
     return hashlib.sha256(content).hexdigest()
 
 
+def is_there(store: Path, key: str) -> bool:
+    """Say whether the assessment ``key`` has a file of evidence."""
+    return _path(store, key).is_file()
+
+
 def load(store: Path, key: str, sha256: str) -> dict[str, Any]:
     """Return the evidence of the assessment ``key``; raises InputError where the file is gone or is not what was written."""
     path = _path(store, key)
     file = f"{path.parent.name}/{path.name}"
-    remedy = "Restore it from a back-up, or remove the file and run the night with retry_failed."
+    remedy = "Remove it and run the night again: it is made anew."
     try:
         content = path.read_bytes()
     except FileNotFoundError:

@@ -91,7 +91,10 @@ def _quiet_engine() -> Iterator[Any]:
         import great_expectations as gx  # noqa: PLC0415  (3 s; only a night needs it)
         from great_expectations.data_context.types.base import ProgressBarsConfig  # noqa: PLC0415
 
-    logging.getLogger("great_expectations").setLevel(logging.ERROR)
+    # Some of its loggers set their own level, so only cutting them off keeps its chatter out of a night's output.
+    logger = logging.getLogger("great_expectations")
+    logger.propagate = False
+    logger.addHandler(logging.NullHandler())
     context = gx.get_context(mode="ephemeral")
     context.enable_analytics(enable=False)
     context.variables.progress_bars = ProgressBarsConfig(globally=False, metric_calculations=False)

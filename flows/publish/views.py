@@ -53,8 +53,9 @@ def material(
     gate: Sequence[Tested],
     software_version: str,
 ) -> Material:
-    """Return the material of a night, its tables as plain rows."""
-    return Material({name: plain_rows(table) for name, table in tables.items()}, protocol, checks, gate, software_version)
+    """Return the material of a night, its tables as plain rows; of the beats, which are many, only what is counted."""
+    shown = {name: table[["verdict", "reasons"]] if name == "beats" else table for name, table in tables.items()}
+    return Material({name: plain_rows(table) for name, table in shown.items()}, protocol, checks, gate, software_version)
 
 
 def night_view(material: Material, release: str) -> NightView:

@@ -25,7 +25,7 @@ def job(tmp_path):
         folder.mkdir()
         (folder / "acquisition.json").write_text(MANIFEST % name)
         (folder / "note.txt").write_text(note)
-        return Job("harbour", name * 64, {path.name: path for path in folder.iterdir()}, PROTOCOL)
+        return Job("harbour", "p", name * 64, {path.name: path for path in folder.iterdir()}, PROTOCOL)
 
     return make
 
@@ -72,12 +72,12 @@ def test_a_failure_reads_the_same_wherever_the_store_lies(tmp_path, monkeypatch)
         raise RuntimeError(message)
 
     monkeypatch.setattr("flows.study.manifest.read_manifest", broken)
-    outcome = assess_job(Job("harbour", "a" * 64, {"acquisition.json": path}, PROTOCOL))
+    outcome = assess_job(Job("harbour", "p", "a" * 64, {"acquisition.json": path}, PROTOCOL))
     assert outcome == Refused(Trouble.PROGRAM, "the program could not assess this package: RuntimeError: cannot use acquisition.json")
 
 
 def test_a_package_without_its_description_is_refused_in_words():
-    outcome = assess_job(Job("harbour", "a" * 64, {"rest-1.csv": Path("rest-1.csv")}, PROTOCOL))
+    outcome = assess_job(Job("harbour", "p", "a" * 64, {"rest-1.csv": Path("rest-1.csv")}, PROTOCOL))
     assert isinstance(outcome, Refused)
     assert outcome.trouble == "input"
     assert outcome.reason.startswith("acquisition.json: is not in the package")
@@ -93,7 +93,7 @@ def test_no_child_outlives_a_killed_parent(tmp_path):
         "from tests.flows.made_work import work\n"
         "assert __name__ == '__main__', 'a child ran the main module again'\n"
         f"(Path({str(tmp_path)!r}) / 'note.txt').write_text('refuse')\n"
-        f"job = Job('harbour', 'a', {{'note.txt': Path({str(tmp_path)!r}) / 'note.txt'}}, bare_protocol('tarn', 'harbour'))\n"
+        f"job = Job('harbour', 'p', 'a', {{'note.txt': Path({str(tmp_path)!r}) / 'note.txt'}}, bare_protocol('tarn', 'harbour'))\n"
         "with Workers(2, work=work) as workers:\n"
         "    workers.outcome(job, workers.submit(job))\n"
         "    print(*workers._pool._pool_manager.worker_manager.workers, flush=True)\n"
