@@ -6,6 +6,8 @@ are published with the interval they have. With a fall of 10 % over 5 beats a sl
 
 from __future__ import annotations
 
+import numpy as np
+
 from checks.check import Check, Level, Limits, Measured, single
 from checks.spoils import PRELOAD_SLOPES
 from checks.subject import RunSubject
@@ -21,7 +23,7 @@ def load_fall(subject: RunSubject) -> Measured:
     chosen = subject.in_window if subject.accepted is None else subject.in_window & subject.accepted
     edv_ml = running_median(beats.edv_ml[chosen], 3)
     if edv_ml.size == 0:
-        return single(0.0)
+        return single(np.nan)
     fall = 1.0 - float(edv_ml.min()) / float(edv_ml.max())
     return single(fall, subject.start_s()[chosen][0])
 

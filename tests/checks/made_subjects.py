@@ -129,9 +129,10 @@ def drawn(count=12, *, volume_at_ends_ml=None, facts=None, **columns):
     )
     size = count * BEAT_SAMPLES + 20
     at_ends = np.full(count + 1, 120.0) if volume_at_ends_ml is None else np.asarray(volume_at_ends_ml, dtype=np.float64)
-    volume = np.repeat(at_ends, BEAT_SAMPLES)[:size]
-    # every sample differs from its neighbours, as in a run without a flat stretch
-    pressure = 60.0 + 50.0 * np.sin(np.arange(size) * 2.0 * np.pi / BEAT_SAMPLES)
+    place = np.arange(size) / BEAT_SAMPLES
+    # every sample differs from its neighbours, as in a run without a flat stretch; a beat ends at exactly the volume given
+    volume = np.interp(place, np.arange(count + 1), at_ends) - 70.0 * np.sin(np.pi * place) ** 2
+    pressure = 60.0 + 50.0 * np.sin(2.0 * np.pi * place)
     return drawn_run(pressure, volume, beats, facts)
 
 
