@@ -7,6 +7,7 @@ from typing import Annotated, Literal, Self
 from pydantic import Field, WithJsonSchema, model_validator
 
 from flows.study.strict import DeclaredModel, Instant, Label, NotNegative, Positive, fault
+from metrics.signals.calibrate import two_point_line
 
 VolumeMethod = Literal["saline", "imaging", "stroke-volume-ratio", "two-point", "cuvette", "none"]
 Segment = Annotated[object, WithJsonSchema({"anyOf": [{"type": "integer", "minimum": 1}, {"type": "string"}]})]
@@ -64,6 +65,10 @@ class PressureCalibration(DeclaredModel):
         if self.points and len({point.applied_mmhg for point in self.points}) < 2:
             problem = "calibration points at one applied pressure give no line"
             raise fault(problem, "Add a point at another applied pressure, or leave points out.")
+        try:
+            two_point_line(tuple((point.applied_mmhg, point.read_mmhg) for point in self.points))
+        except ValueError as trouble:
+            raise fault(str(trouble), "Give what was read at each applied pressure, or leave points out.") from None
         return self
 
     def readings(self) -> tuple[Zero, ...]:

@@ -48,6 +48,8 @@ class Signals:
 def two_point_line(points: tuple[tuple[float, float], ...]) -> tuple[float, float]:
     """Return (k, b) of read = k * applied + b by least squares; (1, 0) with fewer than two distinct applied pressures.
 
+    Raises ValueError when the readings do not answer to the pressure at all: such a line cannot be turned round.
+
     >>> two_point_line(((0.0, 0.1), (100.0, 1.1)))
     (0.01, 0.1)
     """
@@ -56,8 +58,11 @@ def two_point_line(points: tuple[tuple[float, float], ...]) -> tuple[float, floa
     if np.unique(applied).size < 2:
         return 1.0, 0.0
     centred = applied - applied.mean()
-    k = float(np.sum(centred * (read - read.mean())) / np.sum(centred**2))
-    return round(k, 12), round(float(read.mean() - k * applied.mean()), 12)
+    k = round(float(np.sum(centred * (read - read.mean())) / np.sum(centred**2)), 12)
+    if k == 0.0:
+        message = "the pressure sensor reads the same at every applied pressure"
+        raise ValueError(message)
+    return k, round(float(read.mean() - k * applied.mean()), 12)
 
 
 def zero_error_mmhg(time_s: FloatArray, calibration: PressureCalibration) -> FloatArray:
