@@ -57,8 +57,15 @@ def check(
 def nightly(study: Annotated[Path, typer.Argument(help="A folder with protocol.toml and inbox/.")]) -> None:
     """Take in what sites uploaded, assess what is new, and publish one release."""
     from flows.nightly import run_night  # noqa: PLC0415
+    from flows.publish.refusal import GateRefused  # noqa: PLC0415
 
-    sys.stdout.write(f"{run_night(study.resolve())}\n")
+    try:
+        result = run_night(study.resolve())
+    except GateRefused as refusal:
+        problems = "\n".join(f"  {problem}" for problem in refusal.problems)
+        sys.stderr.write(f"Nothing was published, the last release stands. The tables break a promise:\n{problems}\n")
+        raise typer.Exit(1) from None
+    sys.stdout.write(f"{result}\n")
 
 
 @app.command(epilog="Example: beatgate schedule /srv/studies/tarn")

@@ -94,7 +94,8 @@ def _unknown_column(column: str, header: list[str], file: str) -> InputError:
     if all(_NUMBER.fullmatch(name) for name in header):
         problem = "line 1: there is no header, numbers begin at once"
         return InputError(problem, file=file, value=",".join(header), remedy="Add a first line with the names of the columns.")
-    return InputError("there is no such column", file=file, field=column, remedy=did_you_mean(column, filter(None, header)))
+    remedy = did_you_mean(column, filter(None, header)) or "The first line names no column at all."
+    return InputError("there is no such column", file=file, field=column, remedy=remedy)
 
 
 def _parsed(content: bytes, header: list[str], wanted: Sequence[str]) -> dict[str, FloatArray] | None:

@@ -17,9 +17,9 @@ from metrics.arrays import FloatArray
 from metrics.signals.recording import Channel, Recording
 
 _MMHG_KPA = 0.133322387415
-"""The conventional millimetre of mercury in kPa (BIPM, SI Brochure, 8th ed. 2006, table 8; from memory)."""
+"""A millimetre of mercury of 13 595.1 kg/m3 under 9.80665 m/s2, in kPa: [C]; UCUM rounds it to 133.3220 kPa for the metre: [V]."""
 _CMH2O_KPA = 0.0980665
-"""The conventional centimetre of water in kPa (UCUM, m[H2O] = 9.80665 kPa; from memory)."""
+"""A centimetre of water of 1000 kg/m3 under 9.80665 m/s2, in kPa: [C]; UCUM has m[H2O] = 9.80665 kPa: [M]."""
 
 UNITS: dict[str, tuple[str, float]] = {
     "mm[Hg]": ("mm[Hg]", 1.0),

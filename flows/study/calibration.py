@@ -31,7 +31,7 @@ class VolumeSensor(DeclaredModel):
 
 
 class Sensors(DeclaredModel):
-    """Both sensors, always present as objects so that a reader need not ask."""
+    """Both sensors, always present as objects, so that nobody need ask."""
 
     pressure: PressureSensor = PressureSensor()
     volume: VolumeSensor = VolumeSensor()
@@ -120,7 +120,7 @@ class VolumeCalibration(DeclaredModel):
 
 
 class Calibration(DeclaredModel):
-    """Both calibrations, always present as objects so that a reader need not ask."""
+    """Both calibrations, always present as objects, so that nobody need ask."""
 
     pressure: PressureCalibration = PressureCalibration()
     volume: VolumeCalibration = VolumeCalibration()

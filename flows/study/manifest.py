@@ -207,7 +207,7 @@ def _with_profile(data: dict[str, object], protocol: Protocol) -> dict[str, obje
 
 def _segment_problems(manifest: Manifest, file: str) -> list[InputError]:
     problems = []
-    for index, run in enumerate(manifest.runs):
+    for position, run in enumerate(manifest.runs):
         columns = [segment.column for segment in run.channels.segments]
         used = manifest.calibration_of(run).volume.segments_used if columns else ()
         numbers = range(1, len(columns) + 1)
@@ -215,7 +215,9 @@ def _segment_problems(manifest: Manifest, file: str) -> list[InputError]:
             InputError(
                 f"run {run.run!r} has no such segment",
                 file=file,
-                field=f"runs[{index}].channels.segments" if run.calibration is None else f"runs[{index}].calibration.volume.segments_used",
+                field=f"runs[{position}].channels.segments"
+                if run.calibration is None
+                else f"runs[{position}].calibration.volume.segments_used",
                 value=one,
                 remedy=did_you_mean(str(one), [*columns, *map(str, numbers)]),
             )
@@ -228,13 +230,13 @@ def _segment_problems(manifest: Manifest, file: str) -> list[InputError]:
 def _calibrated_problems(manifest: Manifest, file: str) -> list[InputError]:
     """Refuse to guess: with a gain on record and a volume in mL, only the site knows whether the gain has been applied."""
     problems = []
-    for index, run in enumerate(manifest.runs):
+    for position, run in enumerate(manifest.runs):
         volume, calibration = run.channels.volume, manifest.calibration_of(run).volume
         if volume is None or "calibrated" in volume.model_fields_set or volume.unit in {"mS", "S"}:
             continue
         if calibration.alpha is not None or calibration.alpha_vc_ml is not None:
             problem = "is missing, and alpha or alpha_vc_ml is on record"
-            field = f"runs[{index}].channels.volume.calibrated"
+            field = f"runs[{position}].channels.volume.calibrated"
             remedy = "Say true if the column holds corrected mL, false if alpha and alpha_vc_ml still have to be applied."
             problems.append(InputError(problem, file=file, field=field, remedy=remedy))
     return problems
@@ -248,7 +250,7 @@ def _protocol_problems(manifest: Manifest, protocol: Protocol, file: str) -> lis
         ("chamber", manifest.chamber, list(protocol.study.chambers)),
         ("visit", manifest.visit, [visit.name for visit in protocol.visits]),
         ("subject", manifest.subject, protocol.subjects.expected.get(manifest.site, ())),
-        *((f"runs[{index}].stage", run.stage, stages) for index, run in enumerate(manifest.runs)),
+        *((f"runs[{position}].stage", run.stage, stages) for position, run in enumerate(manifest.runs)),
     ]
     return [
         InputError("is not in the study protocol", file=file, field=field, value=value, remedy=did_you_mean(value, known))
@@ -267,11 +269,11 @@ def _folder_problems(manifest: Manifest, site: str, file: str) -> list[InputErro
 def _file_problems(manifest: Manifest, files: Collection[str], file: str) -> list[InputError]:
     signals = sorted(set(files) - {MANIFEST_NAME})
     named: list[tuple[str, str]] = []
-    for index, run in enumerate(manifest.runs):
-        named.append((f"runs[{index}].file", run.file))
+    for position, run in enumerate(manifest.runs):
+        named.append((f"runs[{position}].file", run.file))
         for name, channel in run.channels.signals().items():
             where = name if not name.startswith("segment-") else f"segments[{int(name.removeprefix('segment-')) - 1}]"
-            named += [] if channel.file is None else [(f"runs[{index}].channels.{where}.file", channel.file)]
+            named += [] if channel.file is None else [(f"runs[{position}].channels.{where}.file", channel.file)]
     return [
         InputError("names a file that is not in the package", file=file, field=field, value=path, remedy=did_you_mean(path, signals))
         for field, path in named

@@ -9,7 +9,7 @@ from __future__ import annotations
 
 import hashlib
 import tomllib
-from collections.abc import Sequence
+from collections.abc import Collection, Iterable, Sequence
 from pathlib import Path
 from typing import TYPE_CHECKING, Annotated, Literal, Self
 from zoneinfo import ZoneInfo, available_timezones
@@ -176,11 +176,11 @@ def parse_protocol(content: bytes, *, file: str) -> Protocol:
         problem = "is larger than 4 MB"
         raise InputError(problem, file=file, value=f"{len(content)} bytes", remedy="A protocol holds names and limits only.")
     try:
-        data = tomllib.loads(content.decode("utf-8-sig").replace("\r\n", "\n"))
+        data = tomllib.loads(content.decode("utf-8-sig"))
     except UnicodeDecodeError as failure:
         problem = f"is not UTF-8 at byte {failure.start + 1}"
         raise InputError(problem, file=file, remedy="Save it as UTF-8.") from None
-    except (tomllib.TOMLDecodeError, RecursionError) as failure:
+    except (ValueError, RecursionError) as failure:  # a number of thousands of digits is a bare ValueError
         problem = f"is not TOML: {failure}"
         raise InputError(problem, file=file, remedy="Mend the text there.") from None
     protocol = validated(Protocol, data, file=file)
@@ -214,22 +214,29 @@ def _refuse_twins(table: str, names: Sequence[str]) -> None:
 
 
 def _check_problems(protocol: Protocol, file: str) -> list[InputError]:
-    if not protocol.limits and set(protocol.policy.required_checks) <= set(Policy().required_checks):
+    """Return what is wrong with the names of checks, of their limits and of what is locked."""
+    if not protocol.limits and not protocol.study.lock and protocol.policy.required_checks == Policy().required_checks:
         return []
     from checks import ALL as CHECKS  # noqa: PLC0415  (the cards pull in numpy and scipy, which most protocols do not need)
+    from metrics.indices import ALL as INDICES  # noqa: PLC0415
 
     checks = {check.name: check for check in CHECKS}
+    of_beats = [check.name for check in CHECKS if check.level == "beat"]
+    lockable = [*checks, *(index.name for index in INDICES)]
     problems = [
-        InputError("is not a check", file=file, field="policy.required_checks", value=name, remedy=did_you_mean(name, checks))
-        for name in protocol.policy.required_checks
-        if name not in checks
+        *_unknown_names("study.lock", protocol.study.lock, lockable, file, "is neither a check nor an index"),
+        *_unknown_names("policy.required_checks", protocol.policy.required_checks, of_beats, file, "is not a check of beats"),
+        *_unknown_names("limits", protocol.limits, checks, file, "is not a check"),
     ]
     for name, bounds in protocol.limits.items():
-        if name not in checks:
-            problems.append(InputError("is not a check", file=file, field="limits", value=name, remedy=did_you_mean(name, checks)))
-        else:
-            problems += _limit_problems(name, bounds, checks[name], file)
+        problems += _limit_problems(name, bounds, checks[name], file) if name in checks else []
     return problems
+
+
+def _unknown_names(field: str, names: Iterable[str], known: Collection[str], file: str, problem: str) -> list[InputError]:
+    return [
+        InputError(problem, file=file, field=field, value=name, remedy=did_you_mean(name, known)) for name in names if name not in known
+    ]
 
 
 def _limit_problems(name: str, bounds: dict[str, float], check: Check, file: str) -> list[InputError]:

@@ -105,8 +105,8 @@ ModelT = TypeVar("ModelT", bound=BaseModel)
 def validated(model: type[ModelT], data: object, *, file: str, own_keys: bool = False) -> ModelT:
     """Return ``data`` as ``model``.
 
-    Raises InputError with the first problem as its problem and every further one in its remedy. ``own_keys`` says that the
-    reader of the message may add keys beginning with ``x_``.
+    Raises InputError with the first problem as its problem and every further one in its remedy. ``own_keys`` says that keys
+    beginning with ``x_`` may be added.
     """
     try:
         return model.model_validate(data)

@@ -97,6 +97,7 @@ def test_an_optional_column_is_read_where_it_is(written):
         ("0,1\n1,2\n", "line 1: there is no header", None),
         ("t,p,p\n0,1,2\n", "line 1: two columns have this name", "p"),
         ("t,q\n0,1\n", "there is no such column", "p"),
+        (",\n0,1\n", "there is no such column", "t"),
         ("t,p", "holds a header and no samples", None),
         ("t,p\n\n\n", "holds a header and no samples", None),
         ("t,p\n,\n,\n", "holds no sample in t, p", None),

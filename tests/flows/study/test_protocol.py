@@ -120,7 +120,10 @@ def test_a_protocol_is_frozen_and_crosses_to_another_process_whole():
         ('[policy]\nsuspect = "accepted"\n', "policy.suspect", "not one of accept, reject", "Did you mean 'accept'?"),
         ('[policy]\nrepeat_visit = "ignore"\n', "policy.repeat_visit", "not one of", ""),
         ('[policy]\ncorrect_estimated_delay = "yes"\n', "policy.correct_estimated_delay", "true or false", ""),
-        ('[policy]\nrequired_checks = ["landmark"]\n', "policy.required_checks", "is not a check", "Did you mean 'landmarks'?"),
+        ('[policy]\nrequired_checks = ["landmark"]\n', "policy.required_checks", "is not a check of beats", "Did you mean 'landmarks'?"),
+        ('[policy]\nrequired_checks = ["time-base"]\n', "policy.required_checks", "is not a check of beats", ""),
+        ("[study.lock]\nloop-closur = 1\n", "study.lock", "neither a check nor an index", "Did you mean 'loop-closure'?"),
+        ("[study.lock]\nEes = 1.5\n", "study.lock.Ees", "whole number", ""),
         ("[limits.loop-closur]\nfail_above = 1\n", "limits", "is not a check", "Did you mean 'loop-closure'?"),
         (
             "[limits.loop-closure]\nfail_abov = 1\n",
@@ -177,6 +180,7 @@ def test_the_study_itself_is_held_to_its_names(smallest):
         (b"[study", "is not TOML"),
         (b"a = 1\na = 2\n", "is not TOML"),
         (b"a = " + b"[" * 5000, "is not TOML"),
+        (b"a = " + b"9" * 5000, "is not TOML"),
         (b"#" * (4 * 1024 * 1024 + 1), "larger than 4 MB"),
     ],
 )
