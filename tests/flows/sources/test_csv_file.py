@@ -124,9 +124,9 @@ def test_a_misspelt_column_is_answered(written):
 
 
 def test_a_line_without_end_is_refused_in_time(written):
-    started = time.perf_counter()
+    started = time.process_time()
     refusal(written(b"t,p\n" + b"1" * 20_000_000), "t", "p")
-    assert time.perf_counter() - started < 5
+    assert time.process_time() - started < 5
 
 
 def test_an_oversized_file_is_refused_unread(written, monkeypatch):
@@ -139,9 +139,9 @@ def test_a_long_recording_is_read_fast(written):
     rows = np.round(np.random.default_rng(3).normal(80, 30, (6_000, 4)), 3)
     rows[::7, 1] = np.nan
     path = written("t,p,v,e\n" + 100 * "".join(",".join(map(repr, row)) + "\n" for row in rows.tolist()).replace("nan", ""))
-    started = time.perf_counter()
+    started = time.process_time()
     found = read(path, "t", "p", "v", "e")
-    assert time.perf_counter() - started < 3
+    assert time.process_time() - started < 3
     np.testing.assert_array_equal(np.column_stack([found[name] for name in "tpve"]), np.tile(rows, (100, 1)))
 
 
