@@ -10,6 +10,7 @@ from flows.reports.figures_card import card_figure
 from flows.reports.figures_loops import accepted_together, loop_panel, panel_reach, panel_scales, template_shape
 from flows.reports.figures_preload import preload_filling, preload_loops
 from flows.reports.figures_ribbon import cell_words, ribbon
+from flows.reports.reasons import is_decisive
 from flows.reports.wording import counted, is_number, listing, number, number_ranges, quantity, sentence
 
 if TYPE_CHECKING:
@@ -62,7 +63,7 @@ class LoopGroup:
     """The loops one reason took out of one run: those shown at once, those folded away, and what else there is to say."""
 
     letter: str
-    title: str
+    check: str
     where: str
     shown: tuple[Markup, ...]
     folded: tuple[Markup, ...]
@@ -138,8 +139,8 @@ def _card(reason: Reason, finding: Finding, run: Data | None, place: int) -> Car
         measured += f", limit {quantity(finding['limit'], finding.get('unit'))}"
     return Card(
         anchor=anchor,
-        letter=reason.letter if finding.get("verdict") == "fail" else reason.letter.lower(),
-        decisive=finding.get("verdict") == "fail",
+        letter=reason.letter if is_decisive(finding) else reason.letter.lower(),
+        decisive=is_decisive(finding),
         title=reason.title,
         where=where,
         verdict=str(finding.get("verdict") or ""),
@@ -153,7 +154,7 @@ def _card(reason: Reason, finding: Finding, run: Data | None, place: int) -> Car
 def _deed(finding: Finding) -> str:
     deed = _DEEDS.get(str(finding.get("action") or "none"), sentence(finding.get("action")))
     spoils = [str(index) for index in finding.get("spoils") or ()]
-    if spoils and finding.get("verdict") == "fail":
+    if spoils and is_decisive(finding):
         return f"{deed} It reaches {listing(sorted(spoils), 8)}."
     return deed
 
@@ -201,7 +202,7 @@ def _loop_group(run: Data, chosen: Sequence[int], reason: Reason, place: int, *,
         loop_panel(
             axes,
             loops[beat],
-            f"Beat {beat} of {run['run']}, {verdict} for {reason.title.lower()}",
+            f"Beat {beat} of {run['run']}, {verdict} by {reason.check}",
             f"loop-{place}-{beat}",
             template,
             kept=not rejected,
@@ -212,7 +213,7 @@ def _loop_group(run: Data, chosen: Sequence[int], reason: Reason, place: int, *,
     absent = len(chosen) - len(panels)
     return LoopGroup(
         letter=reason.letter if rejected else reason.letter.lower(),
-        title=reason.title,
+        check=reason.check,
         where=f"{run['run']}: {counted(len(chosen), 'beat')}",
         shown=tuple(panels[:MOST_PANELS]),
         folded=tuple(panels[MOST_PANELS:]),

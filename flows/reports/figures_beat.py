@@ -137,7 +137,7 @@ def _measure(finding: Data, beat: Data, loop: Data | None, axes: tuple[Scale, Sc
         lift = 14 if y.at(value) < y.end_px + 14 else -5
         return [
             line((x.start_px, y.at(value)), (x.end_px, y.at(value)), "gauge"),
-            label((x.start_px + x.end_px) / 2, y.at(value) + lift, words, anchor="middle", class_="label value"),
+            label((x.start_px + x.end_px) / 2, y.at(value) + lift, words, anchor="middle", class_="label value halo"),
         ], words + "."
     return [], ""
 
@@ -173,7 +173,7 @@ def _steepest(series: Sequence[float | None], x: Scale, y: Scale, slope: object)
     rise, run_ = y.at(high) - y.at(low), x.at(index + 1) - x.at(index)
     words = f"dP/dt max {quantity(slope, 'mm[Hg]/s', 4)}"
     start, end = (x.at(index) - run_, y.at(low) - rise), (x.at(index + 1) + run_, y.at(high) + rise)
-    return [line(start, end, "gauge"), label(WIDTH - 10, y.end_px + 12, words, anchor="end", class_="label value")]
+    return [line(start, end, "gauge"), label(WIDTH - 10, (y.start_px + y.end_px) / 2, words, anchor="end", class_="label value halo")]
 
 
 def _stretches(series: Sequence[float | None], *, frozen: bool) -> list[tuple[int, int, str]]:

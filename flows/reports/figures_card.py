@@ -2,17 +2,18 @@
 
 from __future__ import annotations
 
+import math
 from itertools import pairwise
 from typing import TYPE_CHECKING
 
-from flows.reports.figures import Data, element, figure, finite, label, line, scale_over
+from flows.reports.figures import Data, Scale, element, figure, finite, label, line, scale_over
 from flows.reports.figures_beat import HEIGHT, WIDTH, drawing_for, loop_of
 from flows.reports.figures_preload import filling_drawing
 from flows.reports.figures_ruler import flat_ruler, ruler, ruler_words
 from flows.reports.wording import is_number, number
 
 if TYPE_CHECKING:
-    from collections.abc import Sequence
+    from collections.abc import Mapping, Sequence
 
     from markupsafe import Markup
 
@@ -62,7 +63,7 @@ def _drawing(finding: Data, run: Data | None) -> tuple[list[Markup], str] | None
 
 
 def _trace_drawing(finding: Data, run: Data) -> tuple[list[Markup], str]:
-    """Return the whole recording, thinned to one upright stroke a pixel column; columns without a sample are shaded."""
+    """Return the whole recording, thinned to its lowest and highest sample of each pixel column; columns without a sample are shaded."""
     key, unit = ("volume_ml", "mL") if str(finding["check"]).startswith("volume") else ("pressure_mmhg", "mmHg")
     trace = run["trace"]
     points = [pair for pair in zip(trace["time_s"], trace.get(key) or (), strict=False) if is_number(pair[0])]
@@ -73,9 +74,9 @@ def _trace_drawing(finding: Data, run: Data) -> tuple[list[Markup], str]:
         if is_number(value):
             columns.setdefault(int(x.at(time)), []).append(float(value))
     parts = [label(40, 13, f"{'volume' if unit == 'mL' else 'pressure'} over the whole run", class_="label quiet")]
-    parts += _empty_columns(sorted(columns), y.end_px, y.start_px)
-    strokes = "".join(f"M{place} {y.at(max(values)) - 0.5:.1f}V{y.at(min(values)) + 0.5:.1f}" for place, values in sorted(columns.items()))
-    parts.append(element("path", d=strokes, class_="trace"))
+    widest = _widest_step(sorted(columns))
+    parts += _empty_columns(sorted(columns), widest, y.end_px, y.start_px)
+    parts.append(element("path", d=_strokes(columns, y, widest), class_="trace"))
     for tick in y.ticks(3):
         parts += [
             line((36, y.at(tick)), (40, y.at(tick)), "axis"),
@@ -90,12 +91,28 @@ def _trace_drawing(finding: Data, run: Data) -> tuple[list[Markup], str]:
     return [*parts, *axes, label(44, y.end_px + 4, unit, class_="label quiet")], f"The whole run, thinned{reach}."
 
 
-def _empty_columns(places: Sequence[int], top: float, bottom: float) -> list[Markup]:
-    """Return a shade over every stretch wider than three px, and than twice the usual step, where no sample stands."""
-    steps = [(later - earlier, earlier) for earlier, later in pairwise(places)]
-    usual = sorted(step for step, _ in steps)[len(steps) // 2] if steps else 0
+def _strokes(columns: Mapping[int, Sequence[float]], y: Scale, widest: float) -> str:
+    """Return path data through the lowest and the highest sample of each column, in the order in which they came."""
+    parts, last = [], -math.inf
+    for place, values in sorted(columns.items()):
+        pen = "L" if place - last <= widest else "M"
+        for index in sorted({values.index(min(values)), values.index(max(values))}):
+            parts.append(f"{pen}{place} {y.at(values[index]):.1f}")
+            pen = "L"
+        last = place
+    return "".join(parts)
+
+
+def _widest_step(places: Sequence[int]) -> float:
+    """Return how far apart two columns may lie with nothing missing between them: three px, or twice the usual step."""
+    steps = sorted(later - earlier for earlier, later in pairwise(places))
+    return max(3.0, 2.0 * steps[len(steps) // 2]) if steps else 3.0
+
+
+def _empty_columns(places: Sequence[int], widest: float, top: float, bottom: float) -> list[Markup]:
+    """Return a shade over every stretch where no sample stands."""
     return [
-        element("rect", x=start + 1, y=top, width=step - 1, height=bottom - top, class_="stretch missing")
-        for step, start in steps
-        if step > max(3, 2 * usual)
+        element("rect", x=start + 1, y=top, width=end - start - 1, height=bottom - top, class_="stretch missing")
+        for start, end in pairwise(places)
+        if end - start > widest
     ]

@@ -73,9 +73,9 @@ def cell_words(run: Data, beat: Data, reasons: Reasons) -> str:
     mark = reasons.mark(str(run["run"]), int(beat["beat"]))
     words = f"Beat {beat['beat']} at {number(beat.get('start_s'), 4)} s: {beat.get('verdict')}"
     if mark.rejected_by:
-        words += f" for {listing([reasons.title_of(check).lower() for check in mark.rejected_by])}"
+        words += f" by {listing(mark.rejected_by)}"
     if mark.flagged_by:
-        words += f"; flagged for {listing([reasons.title_of(check).lower() for check in mark.flagged_by])}"
+        words += f"; flagged by {listing(mark.flagged_by)}"
     return words + ("; in the preload window" if beat.get("in_window") else "")
 
 

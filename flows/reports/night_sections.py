@@ -14,10 +14,10 @@ if TYPE_CHECKING:
 
     from markupsafe import Markup
 
-    from flows.reports.views import AcquisitionRow, ExpectedRow, NightView, PackageRow, SiteCount
+    from flows.reports.views import AcquisitionRow, ExpectedRow, NightView, PackageRow, ReasonRow, SiteCount
 
 NOT_TAKEN_IN = ("quarantined", "waiting", "superseded")
-_WORST_FIRST = {"queried": 0, "rejected": 1, "accepted": 2}
+_WORST_FIRST = {"rejected": 0, "queried": 1, "accepted": 2}
 
 
 @dataclass(frozen=True, slots=True)
@@ -33,12 +33,13 @@ class Sum:
 
 @dataclass(frozen=True, slots=True)
 class SiteLine:
-    """One site: its counts, its packages drawn, and what it has to answer (acquisitions queried, packages to be sent again)."""
+    """One site: its counts, its packages drawn, what it has to answer (acquisitions queried, packages to send again), and what is lost."""
 
     count: SiteCount
     cells: Markup | None
     queried: tuple[AcquisitionRow, ...]
     quarantined: tuple[PackageRow, ...]
+    rejected: tuple[AcquisitionRow, ...]
 
     @property
     def to_answer(self) -> int:
@@ -90,6 +91,7 @@ def site_lines(night: NightView) -> tuple[SiteLine, ...]:
             cells=package_cells(site, f"site-{place}"),
             queried=tuple(row for row in night.acquisitions if row.site == site.site and row.verdict == "queried"),
             quarantined=tuple(row for row in night.packages if row.site == site.site and row.status == "quarantined"),
+            rejected=tuple(row for row in night.acquisitions if row.site == site.site and row.verdict == "rejected"),
         )
         for place, site in enumerate(sorted(night.sites, key=lambda item: item.site), start=1)
     ]
@@ -112,15 +114,16 @@ def packages_with(night: NightView, statuses: Sequence[str]) -> tuple[PackageLin
     return tuple(PackageLine(row, instant(row.received_at), "" if row.version is None else str(row.version)) for row in chosen)
 
 
-def reason_bars(night: NightView) -> tuple[tuple[Markup, Markup], ...]:
-    """Return, for each reason of the night, a bar for its beats and one for its indices."""
+def reason_lines(night: NightView) -> tuple[tuple[ReasonRow, Markup, Markup], ...]:
+    """Return each reason of the night with a bar for its beats and one for its indices, the costliest in indices, then in beats, first."""
     most_beats = max((row.beats for row in night.reasons), default=0)
     most_indices = max((row.indices_withheld for row in night.reasons), default=0)
-    return tuple((share_bar(row.beats, most_beats), share_bar(row.indices_withheld, most_indices)) for row in night.reasons)
+    ranked = sorted(night.reasons, key=lambda row: (-row.indices_withheld, -row.beats, -row.acquisitions, row.check))
+    return tuple((row, share_bar(row.beats, most_beats), share_bar(row.indices_withheld, most_indices)) for row in ranked)
 
 
 def worst_first(rows: Sequence[AcquisitionRow]) -> tuple[AcquisitionRow, ...]:
-    """Return the acquisitions in the order of the night's table: queried, rejected, accepted; in each the smallest share of beats first."""
+    """Return the acquisitions in the order of the night's table: rejected, queried, accepted; in each the smallest share of beats first."""
     return tuple(
         sorted(
             rows,
@@ -157,7 +160,7 @@ def _expected_cell(row: ExpectedRow | None, by_visit: Mapping[tuple[str, str, st
         return ExpectedCell("", "", "")
     acquisitions = by_visit.get((row.site, row.subject, row.visit), ())
     if not row.received:
-        return ExpectedCell("missing", row.what or "nothing came", "")
+        return ExpectedCell("missing", "" if row.what == "nothing" else row.what, "")
     worst = worst_first(acquisitions)[0] if acquisitions else None
     if worst is None:
         return ExpectedCell("received", row.what or "received", "")

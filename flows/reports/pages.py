@@ -19,7 +19,7 @@ from flows.reports.figures_ribbon import legend_cell
 from flows.reports.figures_sites import status_sign
 from flows.reports.reasons import reasons_of
 from flows.reports.views import acquisition_page
-from flows.reports.wording import counted, instant, listing, number, title_from_name, visible
+from flows.reports.wording import counted, instant, listing, number, visible
 
 if TYPE_CHECKING:
     from collections.abc import Iterable
@@ -70,8 +70,7 @@ def night_html(night: NightView) -> str:
         answer=night_sections.answer_words(lines),
         not_taken_in=night_sections.packages_with(night, night_sections.NOT_TAKEN_IN),
         seen_again=night_sections.packages_with(night, ("seen again",)),
-        reasons=list(zip(night.reasons, night_sections.reason_bars(night), strict=True)),
-        titles={row.check: row.title for row in night.reasons},
+        reasons=night_sections.reason_lines(night),
         expected=night_sections.expected_sites(night),
         acquisitions=night_sections.worst_first(night.acquisitions),
     )
@@ -146,7 +145,7 @@ def _environment() -> Environment:
         keep_trailing_newline=True,
         finalize=visible,
     )
-    environment.filters.update(counted=counted, instant=instant, number=number, title_from_name=title_from_name)
+    environment.filters.update(counted=counted, instant=instant, number=number)
     environment.globals.update(status_sign=status_sign, legend_cell=legend_cell, interval_axis=interval_axis, caution=CAUTION)
     return environment
 

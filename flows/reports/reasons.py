@@ -20,7 +20,7 @@ Finding = Mapping[str, Any]
 
 @dataclass(frozen=True, slots=True)
 class Reason:
-    """One check that did not pass: its letter, its findings (worst first) and three sentences."""
+    """One check that did not pass: its letter, its findings (worst first), and what happened, where, at what cost, with what remedy."""
 
     letter: str
     check: str
@@ -28,6 +28,7 @@ class Reason:
     decisive: bool
     findings: tuple[Finding, ...]
     happened: str
+    where: str
     costs: str
     remedy: str
 
@@ -67,10 +68,6 @@ class Reasons:
         """Return the letter of a check."""
         return self.by_check[check].letter
 
-    def title_of(self, check: str) -> str:
-        """Return the title of a check."""
-        return self.by_check[check].title if check in self.by_check else title_from_name(check)
-
     def mark(self, run: str, beat: int) -> BeatMark:
         """Return what is known against a beat."""
         return self.marks.get(run, {}).get(beat, BeatMark((), ()))
@@ -82,7 +79,7 @@ def reasons_of(view: AcquisitionView) -> Reasons:
     findings: Sequence[Finding] = evidence.get("findings") or ()
     runs: Sequence[Mapping[str, Any]] = evidence.get("runs") or ()
     groups: dict[str, list[Finding]] = {}
-    for finding in sorted(findings, key=lambda item: item.get("verdict") != "fail"):
+    for finding in sorted(findings, key=lambda item: not is_decisive(item)):
         groups.setdefault(str(finding["check"]), []).append(finding)
     rejected_beats = Counter(check for run in runs for beat in run.get("beats") or () for check in split_reasons(beat.get("reasons")))
     named = [
@@ -94,15 +91,16 @@ def reasons_of(view: AcquisitionView) -> Reasons:
         groups[check] = []
     lost_runs = _lost_runs(runs)
     withheld = _withheld_by(view.indices or evidence.get("indices") or (), groups)
-    ranked = sorted(groups.items(), key=lambda item: not (_is_decisive(item[1]) or item[0] in named))
+    ranked = sorted(groups.items(), key=lambda item: not (any(map(is_decisive, item[1])) or item[0] in named))
     ordered = tuple(
         Reason(
             letter=letter(position),
             check=check,
             title=_title(check, group),
-            decisive=_is_decisive(group) or check in named,
+            decisive=any(map(is_decisive, group)) or check in named,
             findings=tuple(group),
             happened=_happened(group, rejected_beats[check]),
+            where=_where(group),
             costs=_costs(check, group, rejected_beats[check], lost_runs.get(check, {}), withheld),
             remedy=next((sentence(finding["remedy"]) for finding in group if finding.get("remedy")), ""),
         )
@@ -112,8 +110,9 @@ def reasons_of(view: AcquisitionView) -> Reasons:
     return Reasons(ordered, by_check, _marks(runs, findings, {check: place for place, check in enumerate(by_check)}))
 
 
-def _is_decisive(group: Sequence[Finding]) -> bool:
-    return any(finding.get("verdict") == "fail" or finding.get("action") in {"reject", "withhold"} for finding in group)
+def is_decisive(finding: Finding) -> bool:
+    """Return whether a finding took something away, or would have to be answered for: a fail, or whatever rejects or withholds."""
+    return finding.get("verdict") == "fail" or finding.get("action") in {"reject", "withhold"}
 
 
 def _title(check: str, group: Sequence[Finding]) -> str:
@@ -132,16 +131,21 @@ def _lost_runs(runs: Sequence[Mapping[str, Any]]) -> dict[str, dict[str, int]]:
 
 
 def _happened(group: Sequence[Finding], rejected_beats: int) -> str:
-    """Return what the worst finding says, and where it and its like were found."""
+    """Return what the worst finding says."""
     if not group:
         return (
             f"Named as the reason for {counted(rejected_beats, 'beat')}."
             if rejected_beats
             else "Named as a reason without a measured value."
         )
-    told = sentence(group[0].get("reason")) or "The check did not pass."
-    places = [place for place in (_place(finding) for finding in group) if place]
-    return f"{told} {sentence('in ' + listing(places, 4))}" if places else told
+    return sentence(group[0].get("reason")) or "The check did not pass."
+
+
+def _where(group: Sequence[Finding]) -> str:
+    """Return the runs and beats a reason was found in; nothing where it concerns the whole acquisition."""
+    deciding = [finding for finding in group if is_decisive(finding)]
+    places = list(dict.fromkeys(filter(None, (_place(finding) for finding in deciding or group))))
+    return sentence(f"in {listing(places, 4)}") if places else ""
 
 
 def _place(finding: Finding) -> str:
@@ -176,8 +180,7 @@ def _costs(
         parts.append(f"the whole of {listing(whole, 3)}")
     elif rejected_beats:
         parts.append(counted(rejected_beats, "beat"))
-    failed = [finding for finding in group if finding.get("verdict") == "fail" or finding.get("action") == "withhold"]
-    spoiled = {str(index) for finding in failed for index in finding.get("spoils") or ()}
+    spoiled = {str(index) for finding in group if is_decisive(finding) for index in finding.get("spoils") or ()}
     gone = sorted(index for index in spoiled if not withheld or check in withheld.get(index, ()))
     if gone:
         parts.append(f"{counted(len(gone), 'index')}: {listing(gone, 8)}")

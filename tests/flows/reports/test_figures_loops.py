@@ -96,4 +96,4 @@ def test_a_beat_rejected_for_two_checks_stands_under_the_heavier():
     run = make_run("rest-1", 6, rejected={3: "cycle-length;loop-closure"})
     findings = [finding("loop-closure", "rest-1", [3], "open"), finding("cycle-length", "rest-1", [3], "early")]
     groups = loop_groups([run], reasons_of(make_view("H-001-baseline", "accepted", [run], findings)), rejected=True)
-    assert [group.title for group in groups] == ["Loop closure"]
+    assert [group.check for group in groups] == ["loop-closure"]

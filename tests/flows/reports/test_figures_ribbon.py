@@ -37,7 +37,7 @@ def test_a_verdict_is_told_by_letter_and_words_not_by_colour_alone():
     signs = re.findall(r'class="sign">(.+?)</text>', str(drawn))
     assert signs[29] == closure
     assert signs[11] == dpdt
-    assert re.search(r'aria-label="Beat 30 at [\d.]+ s: rejected for loop closure"', str(drawn))
+    assert re.search(r'aria-label="Beat 30 at [\d.]+ s: rejected by loop-closure"', str(drawn))
 
 
 def test_a_cell_leads_to_its_card_and_the_tab_key_stops_once_a_reason():

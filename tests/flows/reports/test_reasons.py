@@ -29,8 +29,8 @@ def test_a_suspect_finding_handed_over_first_still_comes_last():
 def test_a_cost_counts_rejected_beats_over_all_runs(many):
     assert many.by_check["loop-closure"].costs == "7 beats."
     assert many.by_check["cycle-length"].costs == "3 beats."
-    assert "rest-1 (beats 5, 21)" in many.by_check["cycle-length"].happened
-    assert "occlusion-1 (beat 14)" in many.by_check["cycle-length"].happened
+    assert "rest-1 (beats 5, 21)" in many.by_check["cycle-length"].where
+    assert "occlusion-1 (beat 14)" in many.by_check["cycle-length"].where
 
 
 def test_a_cost_names_only_indices_that_are_withheld_for_it(many):
@@ -66,7 +66,6 @@ def test_a_check_without_a_finding_still_has_a_letter_and_a_title():
     reasons = reasons_of(make_view("H-001-baseline", "accepted", [make_run("rest-1", 4, rejected={2: "new-check"})], []))
     reason = reasons.by_check["new-check"]
     assert (reason.title, reason.costs, reason.findings) == ("New check", "1 beat.", ())
-    assert reasons.title_of("another-check") == "Another check"
 
 
 def test_a_beat_knows_what_rejected_it_and_what_only_flagged_it(many):
