@@ -4,6 +4,8 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 
+import numpy as np
+
 from metrics.arrays import FloatArray, IntArray
 
 
@@ -43,5 +45,5 @@ class Beats:
 
     @property
     def ef(self) -> FloatArray:
-        """Return stroke volume over end-diastolic volume, shape (n_beats,)."""
-        return self.sv_ml / self.edv_ml
+        """Return stroke volume over end-diastolic volume, shape (n_beats,); NaN where that volume is 0."""
+        return self.sv_ml / np.where(self.edv_ml == 0.0, np.nan, self.edv_ml)
