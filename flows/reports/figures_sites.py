@@ -22,7 +22,7 @@ SIGNS = {
     "superseded": "\u2190",
     "seen again": "=",
 }
-_CELL, _PITCH, _IN_ROW = 17, 20, 24
+_CELL, _PITCH, _IN_ROW = 17, 20, 16
 
 
 def package_cells(site: SiteCount, name: str) -> Markup | None:
