@@ -26,6 +26,7 @@ PRESSURE_OFFSET = frozenset(
         "EDPVR_stiffness",
         "V20",
         "V30",
+        "Pinf",
     ]
 )
 PRESSURE_GAIN = frozenset(
