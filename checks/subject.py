@@ -36,9 +36,9 @@ class RunSubject:
     @cached_property
     def window(self) -> PreloadWindow | None:
         """Return the usable window of a preload-reduction run, else None."""
-        if self.beats is None or self.facts.kind != "preload-reduction":
+        if self.beats is None or self.signals is None or self.facts.kind != "preload-reduction":
             return None
-        return preload_window(self.beats, self.facts)
+        return preload_window(self.beats, self.facts, self.signals.sampling_rate_hz)
 
     @property
     def in_window(self) -> BoolArray:

@@ -32,13 +32,16 @@ class PreloadWindow:
     found_by: str
 
 
-def preload_window(beats: Beats, facts: RunFacts) -> PreloadWindow | None:
-    """Return the usable window of a preload-reduction run, None without at least three beats."""
+def preload_window(beats: Beats, facts: RunFacts, sampling_rate_hz: float) -> PreloadWindow | None:
+    """Return the usable window of a preload-reduction run, None without at least three beats.
+
+    ``sampling_rate_hz`` is that of the signals the beats were found in, which need not be the declared one.
+    """
     if len(beats) < 3 or not np.isfinite(beats.edv_ml).any():
         return None
     load_ml = _bridged(running_median(beats.edv_ml, MEDIAN_BEATS))
-    onset, nadir, found_by = _onset_and_nadir(beats, load_ml, facts)
-    last, ended_by = _deflated(beats, facts, onset, nadir)
+    onset, nadir, found_by = _onset_and_nadir(beats, load_ml, _event_samples(facts, "occlusion-on", sampling_rate_hz))
+    last, ended_by = _deflated(beats, _event_samples(facts, "occlusion-off", sampling_rate_hz), onset, nadir)
     reflex = _first_reflex_beat(beats, onset, facts)
     if reflex is not None and reflex <= last:
         last, ended_by = max(reflex - 1, onset), "reflex"
@@ -51,28 +54,29 @@ def _bridged(values: FloatArray) -> FloatArray:
     return np.interp(np.arange(values.size), np.flatnonzero(finite), values[finite])
 
 
-def _onset_and_nadir(beats: Beats, load_ml: FloatArray, facts: RunFacts) -> tuple[int, int, str]:
+def _event_samples(facts: RunFacts, kind: str, sampling_rate_hz: float) -> list[float]:
+    """Return where the declared events of one kind lie, in samples, ascending."""
+    return sorted(at_s * sampling_rate_hz for at_s, event in facts.events if event == kind)
+
+
+def _onset_and_nadir(beats: Beats, load_ml: FloatArray, ons: list[float]) -> tuple[int, int, str]:
     """Return onset and nadir from the declared events, or from the load itself."""
-    start_s = beats.start.astype(np.float64)
     nadir = int(np.argmin(load_ml))
-    ons = sorted(at for at, kind in facts.events if kind == "occlusion-on")
-    rate = facts.sampling_rate_hz
-    if ons and rate > 0.0:
-        onsets = [int(np.searchsorted(start_s / rate, at)) for at in ons]
-        before = [onset for onset in onsets if onset <= nadir]
-        if before:
-            onset = before[-1]
-            return onset, onset + int(np.argmin(load_ml[onset:])), "event"
+    onsets = [int(np.searchsorted(beats.start, on)) for on in ons]
+    before = [onset for onset in onsets if onset <= nadir]
+    if before:
+        onset = before[-1]
+        return onset, onset + int(np.argmin(load_ml[onset:])), "event"
     top = float(np.max(load_ml[: nadir + 1]))
     full = np.flatnonzero(load_ml[: nadir + 1] >= top - ONSET_SHARE * (top - load_ml[nadir]))
     return int(full[-1]), nadir, "load"
 
 
-def _deflated(beats: Beats, facts: RunFacts, onset: int, nadir: int) -> tuple[int, str]:
+def _deflated(beats: Beats, offs: list[float], onset: int, nadir: int) -> tuple[int, str]:
     """Return the last beat before the deflation, or the nadir."""
-    offs = [at for at, kind in facts.events if kind == "occlusion-off" and at * facts.sampling_rate_hz > beats.start[onset]]
-    if offs:
-        released = int(np.searchsorted(beats.end, min(offs) * facts.sampling_rate_hz, side="right")) - 1
+    after = [off for off in offs if off > beats.start[onset]]
+    if after:
+        released = int(np.searchsorted(beats.end, after[0], side="right")) - 1
         if onset <= released < nadir:
             return released, "deflation"
     return nadir, "nadir"
