@@ -99,30 +99,39 @@ def _outcome(put_in: PutIn, tables: Mapping[str, pd.DataFrame]) -> Outcome:
         return Outcome(put_in, status, tuple(missed))
     words = []
     for expected in put_in.expected or (Expected(put_in.found),):
-        fails = _fails(put_in.acquisition, expected, tables["rejections"])
-        found = _instants_found(put_in.acquisition, expected, fails, tables["beats"])
-        wanted = len(expected.instants_s) or 1
-        where = expected.check if expected.run is None else f"{expected.check} in {expected.run}"
-        words.append(where if wanted == found == 1 else f"{where}, {found} of {wanted}")
-        missed += [] if found == wanted else [f"{where}: found {found} of {wanted}"]
+        said, is_found = _sought(put_in.acquisition, expected, tables)
+        words.append(said)
+        missed += [] if is_found else [said]
     return Outcome(put_in, f"{status}: {'; '.join(words)}", tuple(missed))
+
+
+def _sought(acquisition: str, expected: Expected, tables: Mapping[str, pd.DataFrame]) -> tuple[str, bool]:
+    """Return in words what the check expected came to, and whether that is what was put in.
+
+    Where beats are touched, each must be rejected and at least one by the check expected: a fault that reaches only the rim of a
+    beat may cost it another way.
+    """
+    where = expected.check if expected.run is None else f"{expected.check} in {expected.run}"
+    fails = _fails(acquisition, expected, tables["rejections"])
+    if not expected.instants_s:
+        return (where, True) if len(fails) else (f"{where} not found", False)
+    beats = tables["beats"]
+    rejected = beats[(beats["acquisition"] == acquisition) & (beats["run"] == expected.run) & (beats["verdict"] == "rejected")]
+    gone = _held(expected.instants_s, rejected)
+    named = _held(expected.instants_s, rejected[rejected["beat"].isin(fails["beat"])])
+    otherwise = f", {gone - named} rejected otherwise" if gone > named else ""
+    return f"{where}, {named} of {len(expected.instants_s)}{otherwise}", gone == len(expected.instants_s) and named > 0
 
 
 def _fails(acquisition: str, expected: Expected, rejections: pd.DataFrame) -> pd.DataFrame:
     """Return the failed rows of the check expected, in the run expected."""
-    chosen = rejections[
-        (rejections["acquisition"] == acquisition) & (rejections["check"] == expected.check) & (rejections["verdict"] == "fail")
-    ]
-    return chosen[chosen["run"].isna()] if expected.run is None else chosen[chosen["run"] == expected.run]
+    mine = (rejections["acquisition"] == acquisition) & (rejections["check"] == expected.check) & (rejections["verdict"] == "fail")
+    return rejections[mine & (rejections["run"].isna() if expected.run is None else rejections["run"] == expected.run)]
 
 
-def _instants_found(acquisition: str, expected: Expected, fails: pd.DataFrame, beats: pd.DataFrame) -> int:
-    """Return how many of the instants expected lie in a rejected beat that failed the check; 1 or 0 where no beats are expected."""
-    if not expected.instants_s:
-        return min(len(fails), 1)
-    mine = beats[(beats["acquisition"] == acquisition) & (beats["run"] == expected.run) & (beats["verdict"] == "rejected")]
-    mine = mine[mine["beat"].isin(fails["beat"])]
-    return sum(bool(((mine["start_s"] <= at_s) & (at_s < mine["end_s"])).any()) for at_s in expected.instants_s)
+def _held(instants_s: Sequence[float], beats: pd.DataFrame) -> int:
+    """Return how many of the instants lie in one of the beats."""
+    return sum(bool(((beats["start_s"] <= at_s) & (at_s < beats["end_s"])).any()) for at_s in instants_s)
 
 
 def _index_misses(put_in: PutIn, indices: pd.DataFrame) -> list[str]:

@@ -1,3 +1,4 @@
+import importlib
 import sys
 import types
 from dataclasses import replace
@@ -77,16 +78,25 @@ def test_a_beat_fault_is_found_where_a_rejected_beat_holds_its_instant():
 )
 def test_a_beat_fault_is_missed_otherwise(rejections):
     beats = [beat(1), beat(2, "rejected"), beat(3, "rejected")]
-    assert missed(BEAT, tables(beats=beats, rejections=rejections)) == ("flat-line in rest: found 0 of 1",)
+    assert missed(BEAT, tables(beats=beats, rejections=rejections)) == ("flat-line in rest, 0 of 1, 1 rejected otherwise",)
 
 
 def test_a_beat_that_failed_but_was_accepted_is_missed():
-    assert missed(BEAT, tables(rejections=[rejection("flat-line", run="rest", beat=2)])) == ("flat-line in rest: found 0 of 1",)
+    assert missed(BEAT, tables(rejections=[rejection("flat-line", run="rest", beat=2)])) == ("flat-line in rest, 0 of 1",)
+
+
+def test_every_touched_beat_must_be_rejected_and_one_by_the_check_itself():
+    two = replace(BEAT, expected=(Expected("flat-line", "rest", (1.5, 2.5)),))
+    found = [rejection("flat-line", run="rest", beat=2)]
+    outcome = demo.compared([two], tables(beats=[beat(1), beat(2, "rejected"), beat(3, "rejected")], rejections=found))[0]
+    assert outcome.missed == ()
+    assert "1 of 2, 1 rejected otherwise" in outcome.found
+    assert missed(two, tables(beats=[beat(1), beat(2, "rejected"), beat(3)], rejections=found)) == ("flat-line in rest, 1 of 2",)
 
 
 def test_an_acquisition_fault_is_found_on_its_own_level_only():
     assert missed(WHOLE, tables(status="queried", rejections=[rejection("zero-drift")])) == ()
-    assert missed(WHOLE, tables(status="queried", rejections=[rejection("zero-drift", run="rest")])) == ("zero-drift: found 0 of 1",)
+    assert missed(WHOLE, tables(status="queried", rejections=[rejection("zero-drift", run="rest")])) == ("zero-drift not found",)
 
 
 def test_indices_that_should_be_withheld_or_published():
@@ -182,7 +192,7 @@ def test_what_is_put_in_is_found_by_the_program(tmp_path, capsys):
     shown = capsys.readouterr().out
     for words in (
         "pressure zero drifts by 7 mmHg",
-        "flat-line in baseline-rest, 3 of 3",
+        "accepted: flat-line in baseline-rest, ",
         "seen again",
         "published/latest/report/index.html",
     ):
@@ -208,3 +218,14 @@ def test_a_folder_of_something_else_is_refused_before_anything_runs(tmp_path):
         with pytest.raises(InputError, match="not empty"):
             demo.run_demo(tmp_path)
     assert np.array_equal([path.name for path in tmp_path.iterdir()], ["mine.txt"])
+
+
+def test_the_night_itself_publishes_what_the_demo_reads(tmp_path, monkeypatch, capsys):
+    nightly = importlib.import_module("flows.nightly")
+    monkeypatch.setattr(nightly, "run_night", nightly.run_night_plain)
+    monkeypatch.setattr(tarn, "CASES", tuple(case for case in CASES if case.subject in {"F-004", "Q-006", "W-001"}))
+    demo.run_demo(tmp_path)
+    demo.run_demo(tmp_path)
+    assert capsys.readouterr().out.count("ok  F-004-visit-1") == 2
+    assert len([path for path in (tmp_path / "published").iterdir() if not path.is_symlink()]) == 1
+    assert (tmp_path / "published" / "latest" / "report" / "index.html").is_file()

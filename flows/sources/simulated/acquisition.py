@@ -182,9 +182,6 @@ def _volume_calibration(recipe: Recipe, runs: Mapping[str, RecordedRun]) -> Fact
 
 
 def _run_facts(recipe: Recipe, plan: RunPlan, run: RecordedRun) -> Facts:
-    beats = run.truth.beats
-    occlusion = plan.conditions.occlusion
-    before = beats.start_s < (np.inf if occlusion is None else occlusion.onset_s)
     facts: Facts = {
         "run": plan.run,
         "kind": run.kind,
@@ -193,7 +190,7 @@ def _run_facts(recipe: Recipe, plan: RunPlan, run: RecordedRun) -> Facts:
         "sampling_rate_hz": recipe.rate_hz,
         "started_at": _at(recipe, plan.hour),
         "ended_at": _at(recipe, plan.hour + plan.conditions.duration_s / 3600.0),
-        "heart_rate_per_min": round(60.0 / float(np.mean(beats.rr_s[before]))),
+        "heart_rate_per_min": round(60.0 / float(np.mean(run.truth.beats.rr_s))),
         "respiration": "held" if plan.conditions.breathing is None else "free",
         "channels": _channels(recipe),
     }

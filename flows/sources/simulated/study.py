@@ -5,6 +5,7 @@ Everything follows from fixed seeds and fixed clocks, so that the same folder co
 
 from __future__ import annotations
 
+import zlib
 from dataclasses import replace
 from datetime import datetime, timedelta, timezone
 from pathlib import Path
@@ -37,12 +38,12 @@ def make_study(folder: Path) -> list[PutIn]:
         raise InputError(problem, file=str(folder), remedy="Name a new or an empty folder.")
     folder.mkdir(parents=True, exist_ok=True)
     protocol.write_bytes(PROTOCOL.encode())
-    return [put_in for number, case in enumerate(CASES) for put_in in _upload(folder / "inbox" / case.site, case, number)]
+    return [put_in for case in CASES for put_in in _upload(folder / "inbox" / case.site, case)]
 
 
-def _upload(inbox: Path, case: Case, number: int) -> list[PutIn]:
+def _upload(inbox: Path, case: Case) -> list[PutIn]:
     """Write a case's packages and return them, in the order they were sent."""
-    sound = made(_recipe(case, number))
+    sound = made(_recipe(case))
     injected = Injected(sound, ()) if case.inject is None else case.inject(sound, case.severity)
     sent_at = sound.recipe.identity.recorded_at + timedelta(hours=7)
     first, *later = case.packages()
@@ -82,9 +83,11 @@ def _alter(path: Path) -> None:
     path.write_bytes(bytes(content))
 
 
-def _recipe(case: Case, number: int) -> Recipe:
+def _recipe(case: Case) -> Recipe:
+    # Numbers come from the name, so that a case added to the list changes no other.
+    number = zlib.crc32(case.subject.encode())
     clock = timezone(timedelta(hours=SITES[case.site]))
-    recorded_at = datetime(2026, 2, 2 + number, 9, 10 + number, tzinfo=clock)
+    recorded_at = datetime(2026, 2, 2 + number % 20, 9, number % 60, tzinfo=clock)
     identity = Identity("tarn", case.site, case.subject, "visit-1", case.acquisition, recorded_at)
     heart = _individual(heart_named(case.heart), number)
     plans: tuple[RunPlan, ...] = rest_and_ramp()
@@ -92,7 +95,7 @@ def _recipe(case: Case, number: int) -> Recipe:
         stronger = replace(heart, ees_mmhg_per_ml=1.45 * heart.ees_mmhg_per_ml, heart_rate_per_min=1.15 * heart.heart_rate_per_min)
         plans += rest_and_ramp("infusion", RECORDING_HOUR + 0.4, stronger)
     runs = tuple(replace(plan, conditions=_conditions(case, plan)) for plan in plans)
-    return Recipe(identity, heart, runs, seed=1000 + 10 * number, **case.recipe)
+    return Recipe(identity, heart, runs, seed=number, **case.recipe)
 
 
 def _conditions(case: Case, plan: RunPlan) -> Conditions:
