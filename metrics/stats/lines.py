@@ -77,6 +77,7 @@ def _deming_rows(x: FloatArray, y: FloatArray, noise_ratio: float) -> tuple[Floa
 def deming_line(x: FloatArray, y: FloatArray, noise_ratio: float, confidence: float = 0.95) -> Line:
     """Return Deming's line with t intervals from the jackknife; ``x`` and ``y`` have shape (n,).
 
+    A line that one point alone holds up (the others have one load) is boundless in slope and intercept.
     Raises ValueError with fewer than four points or no spread in x.
     """
     _demand_points(x, 4)
@@ -86,7 +87,8 @@ def deming_line(x: FloatArray, y: FloatArray, noise_ratio: float, confidence: fl
     slopes, constants = _deming_rows(
         np.broadcast_to(x, (n, n))[others].reshape(n, n - 1), np.broadcast_to(y, (n, n))[others].reshape(n, n - 1), noise_ratio
     )
-    covariance = (n - 1) ** 2 / n * np.cov(slopes, constants)
+    stands = bool(np.isfinite(slopes).all())
+    covariance = (n - 1) ** 2 / n * np.cov(slopes, constants) if stands else np.full((2, 2), np.inf)
     return interval_of(slope, constant, covariance, n, confidence)
 
 
