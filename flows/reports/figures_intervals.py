@@ -17,10 +17,14 @@ REACH_PERCENT = 50.0
 def interval_figure(row: Data, name: str) -> Markup | None:
     """Return the interval of one index row: thin for everything, thick for the fit alone, a dot for the value.
 
+    Where only the fit has an interval, that one is drawn.
+
     An interval that leaves the axis ends in an arrow head. None without a value, without an interval, or where the value is so near
     to zero against its interval that per cent of it say nothing.
     """
     value, low, high = row.get("value"), row.get("ci_low"), row.get("ci_high")
+    if not (is_number(low) and is_number(high)):
+        low, high = row.get("fit_ci_low"), row.get("fit_ci_high")
     if not (is_number(value) and is_number(low) and is_number(high)) or value == 0 or abs(value) < 0.2 * (high - low):
         return None
     axis, middle = Scale(-REACH_PERCENT, REACH_PERCENT, 8, SIZE[0] - 8), SIZE[1] / 2

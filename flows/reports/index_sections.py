@@ -122,10 +122,11 @@ def _lines(rows: Iterable[Row], name: str) -> tuple[IndexLine, ...]:
 
 
 def _interval(row: Row) -> str:
-    low, high = row.get("ci_low"), row.get("ci_high")
-    if not (is_number(low) and is_number(high)):
-        return MISSING
-    return f"{number(low)} to {number(high)}"
+    """Return the interval as text: that of everything, else that of the fit alone, said so."""
+    for (low, high), note in (((row.get("ci_low"), row.get("ci_high")), ""), ((row.get("fit_ci_low"), row.get("fit_ci_high")), " (fit)")):
+        if is_number(low) and is_number(high):
+            return f"{number(low)} to {number(high)}{note}"
+    return MISSING
 
 
 def _withheld(rows: Iterable[Row]) -> tuple[Withheld, ...]:
