@@ -90,10 +90,17 @@ class AcquisitionSubject:
     runs: tuple[RunSubject, ...] = ()
 
     def steady_medians(self) -> dict[str, float]:
-        """Return the median ``edv_ml``, ``esv_ml`` and ``sv_ml`` of the accepted beats of all steady runs; NaN without any."""
+        """Return the median ``edv_ml``, ``esv_ml`` and ``sv_ml`` of the accepted beats at rest; NaN without any.
+
+        At rest: the steady runs of the reference stage, else those of the stage the first steady run stands in. What another method
+        measured beside a catheter was measured before anything was infused.
+        """
+        steady = [run for run in self.runs if run.facts.kind == "steady"]
+        stages = [run.facts.stage for run in steady]
+        stage = self.facts.reference_stage if self.facts.reference_stage in stages else next(iter(stages), None)
         parts: dict[str, list[FloatArray]] = {"edv_ml": [], "esv_ml": [], "sv_ml": []}
-        for run in self.runs:
-            if run.facts.kind == "steady" and run.beats is not None and run.accepted is not None:
+        for run in steady:
+            if run.facts.stage == stage and run.beats is not None and run.accepted is not None:
                 for name, values in parts.items():
                     values.append(getattr(run.beats, name)[run.accepted])
         joined = {name: np.concatenate(values) if values else np.empty(0) for name, values in parts.items()}

@@ -58,6 +58,7 @@ def acquisition_facts(manifest: Manifest, protocol: Protocol) -> AcquisitionFact
         bsa_m2=manifest.subject_facts.bsa_m2,
         runs_by_kind=dict(Counter(run.kind for run in manifest.runs)),
         missing_required=missing_required(manifest, protocol),
+        reference_stage=protocol.reference_stage,
     )
 
 

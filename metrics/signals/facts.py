@@ -76,7 +76,10 @@ class RunFacts:
 
 @dataclass(frozen=True, slots=True)
 class AcquisitionFacts:
-    """What the site declared about one acquisition, beside its runs, and what the protocol demands of it."""
+    """What the site declared about one acquisition, beside its runs, and what the protocol demands of it.
+
+    ``reference_stage`` is the stage that changes are counted from, None where the protocol names no stages.
+    """
 
     chamber: str = "LV"
     rhythm: str | None = None
@@ -89,3 +92,4 @@ class AcquisitionFacts:
     bsa_m2: float | None = None
     runs_by_kind: Mapping[str, int] = field(default_factory=dict)
     missing_required: tuple[str, ...] = ()
+    reference_stage: str | None = None

@@ -165,6 +165,12 @@ def test_what_the_visit_demands_and_the_package_lacks_is_named_in_the_protocol_s
     assert missing_required(complete, protocol(VISIT)) == ()
 
 
+def test_the_stage_changes_are_counted_from_is_the_protocol_s():
+    assert acquisition_facts(manifest(), protocol()).reference_stage is None
+    stages = '[[stages]]\nname = "infusion"\n[[stages]]\nname = "baseline"\nreference = true\n'
+    assert acquisition_facts(manifest(), protocol(stages)).reference_stage == "baseline"
+
+
 def test_a_visit_the_protocol_does_not_list_demands_nothing():
     assert missing_required(manifest(), protocol()) == ()
     assert missing_required(manifest(visit="month-6"), protocol(VISIT)) == ()

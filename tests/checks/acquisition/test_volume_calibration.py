@@ -1,3 +1,5 @@
+from dataclasses import replace
+
 import numpy as np
 import pytest
 
@@ -8,6 +10,9 @@ from metrics.signals.facts import AcquisitionFacts, ReferenceVolumes, RunFacts, 
 from tests.checks.made_subjects import CHECKS, drawn, never_improves
 
 P, S, F, N = Verdict.PASS, Verdict.SUSPECT, Verdict.FAIL, Verdict.NOT_EVALUATED
+
+
+STAGES = (("rest", (120.0, 50.0)), ("infusion", (100.0, 10.0)))
 
 
 def steady(edv_ml, esv_ml, *, kind="steady", accepted=True, count=10):
@@ -71,6 +76,22 @@ def test_without_reference_or_accepted_steady_beats_nothing_is_compared():
         assert found(name, reference).worst() is N
         assert found(name, reference, steady(200.0, 50.0, accepted=False)).worst() is N
         assert found(name, reference, steady(200.0, 50.0, kind="preload-reduction")).worst() is N
+
+
+def test_the_reference_is_held_against_the_heart_at_rest_not_under_an_infusion():
+    rest, infusion = (replace(steady(*volumes), facts=RunFacts(stage, "steady", stage=stage)) for stage, volumes in STAGES)
+    reference = ReferenceVolumes("CMR", 120.0, 50.0, 70.0)
+    for stage, runs, expected in (
+        (None, (rest, infusion), P),
+        (None, (infusion, rest), F),
+        ("rest", (infusion, rest), P),
+        ("infusion", (rest, infusion), F),
+        ("recovery", (rest, infusion), P),
+    ):
+        facts = AcquisitionFacts(reference=reference, reference_stage=stage)
+        for name in ("reference-stroke-volume", "reference-volumes"):
+            check = CHECKS[name]
+            assert judge(check, AcquisitionSubject(facts, runs), check.limits).worst() is expected, (stage, name)
 
 
 @pytest.mark.parametrize("condition", ["mitral-regurgitation", "aortic-regurgitation", "shunt"])
