@@ -96,16 +96,15 @@ def _run(run: RunVerdict, row: Row, beats: Sequence[Row]) -> Row:
 
 
 def trace(signals: Signals) -> Row:
-    """Return pressure and volume over time in at most 3,000 points: smallest and largest of each stretch, so that spikes survive."""
+    """Return pressure and volume over time in at most 3,000 points: each one's smallest and largest of each stretch, so spikes survive."""
     count = signals.pressure_mmhg.size
-    stretch = max(1, -(-2 * count // TRACE_POINTS))
-    edges = np.arange(0, count, stretch)
-    if stretch == 1:
-        kept = np.arange(count)
-    else:
-        low = edges + _arg_in_stretches(signals.pressure_mmhg, stretch, np.argmin)
-        high = edges + _arg_in_stretches(signals.pressure_mmhg, stretch, np.argmax)
-        kept = np.unique(np.concatenate([low, high]))
+    kept = np.arange(count)
+    if count > TRACE_POINTS:
+        stretch = -(-4 * count // TRACE_POINTS)
+        edges = np.arange(0, count, stretch)
+        channels = (signals.pressure_mmhg, signals.volume_ml)
+        extremes = [edges + _arg_in_stretches(values, stretch, choose) for values in channels for choose in (np.argmin, np.argmax)]
+        kept = np.unique(np.concatenate(extremes))
     return {
         "time_s": _rounded(kept / signals.sampling_rate_hz, 4),
         "pressure_mmhg": _rounded(signals.pressure_mmhg[kept]),
