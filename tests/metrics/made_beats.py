@@ -13,7 +13,7 @@ SLOW_HZ = 25.0
 def made_beats(count, *, rr_s=0.8, rate_hz=250.0, **columns):
     """Beats at even steps, or those of ``rr_s`` where it is a list; every other column is NaN unless given."""
     lengths = np.full(count, rr_s) if np.isscalar(rr_s) else np.asarray(rr_s, dtype=np.float64)
-    edges = np.round(np.concatenate([[0.0], np.cumsum(lengths)]) * rate_hz).astype(np.int64)
+    edges = np.round(np.concatenate([[0.0], np.cumsum(np.nan_to_num(lengths, nan=0.8))]) * rate_hz).astype(np.int64)
     places = {name: np.full(count, -1, dtype=np.int64) for name in ("dpdt_max_at", "dpdt_min_at", "esv_at", "r_at")}
     values = {
         name: np.full(count, np.nan)

@@ -1,0 +1,113 @@
+"""What a calibration error does to each published index: arithmetic, and so a property every index must have.
+
+A gain or an offset is put on the recorded channel; the recording then goes the program's whole way, verdicts and all.
+"""
+
+from dataclasses import replace
+from functools import cache
+
+import pytest
+from hypothesis import given, settings
+from hypothesis import strategies as st
+
+from metrics.indices import ALL
+from metrics.signals.recording import Recording
+from tests.bench.accuracy_of_clean import facts_of, judged, published, recording_of
+from tests.metrics.recorded_hearts import heart_runs
+
+CASES = [("normal", "noiseless"), ("normal", "noisy"), ("failing", "noisy"), ("right", "noiseless"), ("right", "noisy")]
+NAMES = [index.name for index in ALL]
+
+EXACT = 1e-6
+"""Everything on the way is linear in a gain or passes an offset through."""
+ITERATED = dict.fromkeys(("ESP", "Ea", "Ees", "V0", "Ees_Ea"), 1e-3)
+"""V0 is iterated to 0.01 mL, so now and then an end-systole may move to its neighbour; V0's as a fraction of EDV."""
+MEDIANS = 3e-3
+"""A median of ratios is not the ratio of medians, which is what the prediction for an offset is made of."""
+
+
+@cache
+def assessed(heart, catheter, channel=None, gain=1.0, offset=0.0):
+    """Values and beats of every index, and which beats were accepted, with a gain and an offset on one recorded channel."""
+    verdicts = []
+    for run in heart_runs(heart, catheter=catheter).values():
+        recording = recording_of(run)
+        if channel is not None:
+            shown = recording.channels[channel]
+            changed = replace(shown, samples=gain * shown.samples + offset)
+            recording = Recording(recording.run, {**recording.channels, channel: changed})
+        verdicts.append(judged(recording, facts_of(run)))
+    rows = published(verdicts)
+    return {name: rows[name]["value"] for name in NAMES}, [verdict.rejected_by for verdict in verdicts]
+
+
+def volume_gain(was, g):
+    scaled = {"EDV": g, "ESV": g, "SV": g, "SW": g, "V0": g, "Ea": 1.0 / g, "Ees": 1.0 / g}
+    return {name: value * scaled.get(name, 1.0) for name, value in was.items()}
+
+
+def volume_offset(was, o):
+    moved = {name: was[name] + o for name in ("EDV", "ESV", "V0")}
+    return was | moved | {"EF": was["EF"] * was["EDV"] / (was["EDV"] + o)}
+
+
+def pressure_gain(was, g):
+    scaled = ("EDP", "ESP", "Pmax", "Ea", "SW", "dPdt_max", "dPdt_min", "Ees", "PRSW")
+    return {name: value * (g if name in scaled else 1.0) for name, value in was.items()}
+
+
+def pressure_offset(was, e):
+    moved = {name: was[name] + e for name in ("EDP", "ESP", "Pmax")}
+    ea = was["Ea"] + e / was["SV"]
+    return was | moved | {"Ea": ea, "V0": was["V0"] - e / was["Ees"], "Ees_Ea": was["Ees"] / ea}
+
+
+def compare(found, predicted, tolerances):
+    scales = {"V0": found["EDV"], "EDP": found["Pmax"]}
+    for name in NAMES:
+        allowed = tolerances.get(name, EXACT) * abs(scales.get(name, predicted[name]))
+        assert found[name] == pytest.approx(predicted[name], rel=0.0, abs=allowed), name
+
+
+def check(case, channel, gain, offset, predicted, tolerances):
+    was, rejected = assessed(*case)
+    found, rejected_now = assessed(*case, channel, gain, offset)
+    assert rejected_now == rejected
+    compare(found, predicted(was, gain if offset == 0.0 else offset), tolerances)
+
+
+GAIN = st.floats(0.85, 1.18)
+FEW = settings(max_examples=8, deadline=None)
+
+
+@pytest.mark.parametrize("case", CASES, ids="-".join)
+@FEW
+@given(gain=GAIN)
+def test_volume_gain(case, gain):
+    check(case, "volume", gain, 0.0, volume_gain, ITERATED)
+
+
+@pytest.mark.parametrize("case", CASES, ids="-".join)
+@FEW
+@given(offset=st.floats(-15.0, 30.0).filter(bool))
+def test_volume_offset(case, offset):
+    check(case, "volume", 1.0, offset, volume_offset, ITERATED | {"EF": MEDIANS})
+
+
+@pytest.mark.parametrize("case", CASES, ids="-".join)
+@FEW
+@given(gain=GAIN)
+def test_pressure_gain(case, gain):
+    check(case, "pressure", gain, 0.0, pressure_gain, ITERATED)
+
+
+@pytest.mark.parametrize("case", CASES, ids="-".join)
+@FEW
+@given(offset=st.floats(-4.0, 6.0).filter(bool))
+def test_pressure_offset(case, offset):
+    check(case, "pressure", 1.0, offset, pressure_offset, ITERATED | {"Ea": MEDIANS, "Ees_Ea": MEDIANS})
+
+
+def test_every_index_has_a_prediction():
+    was, _ = assessed(*CASES[0])
+    assert all(value is not None for value in was.values())
