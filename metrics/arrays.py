@@ -111,3 +111,13 @@ def robust_sd(values: FloatArray) -> float:
     if finite.size == 0:
         return float("nan")
     return float(1.4826 * np.median(np.abs(finite - np.median(finite))))
+
+
+def smallest_step(values: FloatArray) -> float:
+    """Return the smallest difference between two of the values, 0 where all are alike: the step of the converter that wrote them.
+
+    >>> smallest_step(np.array([0.5, 2.0, np.nan, 1.5, 2.0]))
+    0.5
+    """
+    levels = np.unique(values[np.isfinite(values)])
+    return float(np.min(np.diff(levels))) if levels.size > 1 else 0.0

@@ -1,7 +1,9 @@
 """Flat line: a signal that stands still while the heart does not.
 
-Quantised diastasis and plateaus are flat in health, so only identical raw samples for more than 0.4 of the beat count (a share found on
-simulated quantised hearts).
+Quantised diastasis and plateaus are flat in health, so only identical raw samples for more than 0.4 of the beat count. A coarse
+converter is flat for longer than that on an empty ventricle, but it arrives and leaves by single steps: a stretch counts only if it
+begins or ends with a jump of more than three steps, lies at an edge of the run, or holds a whole beat. Without that, hearts recorded
+in steps of 0.5 mmHg and 0.5 mL lost 7 % of their beats during occlusions, in steps of 1 mmHg and 1 mL 15 % (measured on simulated ones).
 """
 
 from __future__ import annotations
@@ -10,7 +12,9 @@ import numpy as np
 
 from checks.check import Check, Level, Limits, Measured
 from checks.subject import RunSubject
-from metrics.arrays import FloatArray, IntArray
+from metrics.arrays import BoolArray, FloatArray, IntArray, smallest_step
+
+JUMP_STEPS = 3.0
 
 
 def still_stretches(samples: FloatArray) -> tuple[IntArray, IntArray]:
@@ -26,15 +30,34 @@ def still_stretches(samples: FloatArray) -> tuple[IntArray, IntArray]:
     return first[long], stop[long]
 
 
+def has_jump(samples: FloatArray, first: IntArray, stop: IntArray) -> BoolArray:
+    """Return which stretches were entered or left by more than three of the channel's steps, or lie at its edge; shape of ``first``.
+
+    >>> steps = np.array([0.0, 1.0, 1.0, 1.0, 2.0, 2.0, 2.0, 9.0])
+    >>> has_jump(steps, np.array([1, 4]), np.array([4, 7])).tolist()
+    [False, True]
+    """
+    widest = JUMP_STEPS * smallest_step(samples)
+    entered = np.abs(samples[first] - samples[np.maximum(first - 1, 0)])
+    left = np.abs(samples[np.minimum(stop, samples.size - 1)] - samples[stop - 1])
+    # not "greater than": beside a missing sample the difference is no number, and that is no way a plateau ends
+    jumped: BoolArray = ~(entered <= widest) | ~(left <= widest) | (first == 0) | (stop == samples.size)
+    return jumped
+
+
 def still_share(subject: RunSubject) -> Measured:
-    """Return the longest still stretch of pressure or volume over the beat's length, and when it begins; shape (n_beats,)."""
+    """Return the longest still stretch of pressure or volume over the beat's length, and when it begins; shape (n_beats,).
+
+    A stretch without a jump at either end counts only in beats that it covers from end to end.
+    """
     beats, signals = subject.known_beats(), subject.known_signals()
     share, at_s = np.zeros(len(beats)), np.full(len(beats), np.nan)
     length = (beats.end - beats.start).astype(np.float64)
     for name in ("pressure", "volume"):
         if subject.recording is None or name not in subject.recording.channels:
             continue
-        first, stop = still_stretches(subject.channel(name).samples)
+        samples = subject.channel(name).samples
+        first, stop = still_stretches(samples)
         positions = signals.recorded_at[name]
         begin, end = positions[first], positions[stop - 1]
         # the part of each stretch inside each beat it touches
@@ -44,7 +67,8 @@ def still_share(subject: RunSubject) -> Measured:
         stretch = np.repeat(np.arange(begin.size), touched)
         beat = np.repeat(from_beat, touched) + np.arange(stretch.size) - np.repeat(np.cumsum(touched) - touched, touched)
         inside = np.minimum(end[stretch], beats.end[beat]) - np.maximum(begin[stretch], beats.start[beat])
-        worst = inside / length[beat]
+        counts = has_jump(samples, first, stop)[stretch] | (inside >= length[beat] - 1.0)
+        worst = np.where(counts, inside / length[beat], 0.0)
         order = np.argsort(worst, kind="stable")
         better = worst[order] > share[beat[order]]
         share[beat[order[better]]] = worst[order[better]]

@@ -11,7 +11,7 @@ import numpy as np
 from checks.check import Check, Level, Limits, Measured, single
 from checks.spoils import PRESSURE_SHAPE, VOLUME_SHAPE
 from checks.subject import RunSubject
-from metrics.arrays import FloatArray, IntArray
+from metrics.arrays import FloatArray, IntArray, smallest_step
 
 LEAST_FLAT_S = 0.012
 LEAST_FLAT_SAMPLES = 3
@@ -29,15 +29,13 @@ def flat_tops(samples: FloatArray, sampling_rate_hz: float) -> IntArray:
     if finite.size < LEAST_FLAT_SAMPLES:
         return np.empty(0, dtype=np.int64)
     top = finite.max()
-    levels = np.unique(finite)
-    quantum = float(np.min(np.diff(levels))) if levels.size > 1 else 0.0
     at_top = np.concatenate([[False], samples == top, [False]])
     edges = np.flatnonzero(np.diff(at_top.astype(np.int8)))
     first, stop = edges[::2], edges[1::2]
     least = max(LEAST_FLAT_SAMPLES, int(np.ceil(LEAST_FLAT_S * sampling_rate_hz)))
     arrival = top - samples[np.maximum(first - 1, 0)]
     # a converter of more than 1,000 levels rounds finer than noise; below that the approach itself is coarse
-    jumped = arrival > JUMP_QUANTA * max(quantum, 1e-9 * abs(top))
+    jumped = arrival > JUMP_QUANTA * max(smallest_step(samples), 1e-9 * abs(top))
     railed: IntArray = first[(stop - first >= least) & (first > 0) & jumped]
     return railed
 

@@ -8,9 +8,12 @@ from checks.beat.flat_line import still_stretches
 from checks.check import Verdict
 from checks.subject import RunSubject
 from checks.verdicts import Rules, sentence
+from flows.sources.simulated.catheter import Catheter
 from flows.sources.simulated.recorded import NOISELESS
+from flows.sources.simulated.rhythm import Conditions, Occlusion
 from tests.checks.made_subjects import (
     BEAT_SAMPLES,
+    COARSE,
     QUANTISED,
     RAMP,
     REST,
@@ -166,12 +169,35 @@ def test_a_growing_freeze_never_improves_the_verdict():
     assert [found.worst() for found in shares][3:5] == [P, F]
 
 
-@pytest.mark.parametrize("catheter", [NOISELESS, QUANTISED])
+@pytest.mark.parametrize("catheter", [NOISELESS, QUANTISED, Catheter(pressure_step_mmhg=0.5, volume_step_ml=0.5), COARSE])
 @pytest.mark.parametrize("rate_hz", [250.0, 1000.0])
 def test_quantised_diastasis_is_flat_in_health(catheter, rate_hz):
+    deep = Conditions(duration_s=14.0, occlusion=Occlusion(onset_s=4.0, floor=0.15, time_constant_s=2.0))
     for heart in ("large", "failing", "right"):
-        for conditions in (REST, RAMP):
+        for conditions in (REST, RAMP, deep):
             assert worst(simulated(heart, conditions, catheter, rate_hz), "flat-line") is P
+
+
+def test_a_coarse_converter_still_shows_a_freeze():
+    subject = simulated("right", RAMP, COARSE)
+    samples = subject.recording.channels["volume"].samples.copy()
+    samples[1000:1400] = samples[1000]
+    assert worst(rerecorded(subject, volume=samples), "flat-line") is F
+
+
+def test_a_freeze_that_ends_where_it_began_is_found_in_the_beats_it_covers():
+    subject = frozen(600, 1000)
+    channels = dict(subject.recording.channels)
+    samples = channels["volume"].samples
+    slope = np.sign(np.arange(samples.size) - 800.0) * np.maximum(np.abs(np.arange(samples.size) - 800.0) - 200.0, 0.0)
+    ramp = replace(channels["volume"], samples=100.0 + 0.1 * np.floor(slope / 10.0))
+    found = of(judged_run(replace(subject, recording=replace(subject.recording, channels=channels | {"volume": ramp}))), "flat-line")
+    assert [found.verdict[beat] for beat in (3, 4)] == [F, F]
+
+
+def test_a_channel_that_never_moved_or_died_for_good_is_still():
+    assert failing(frozen(0, 2420, "volume"), "flat-line") == list(range(12))
+    assert failing(frozen(1510, 2420, "volume"), "flat-line") == [7, 8, 9, 10, 11]
 
 
 def test_stillness_does_not_depend_on_unit_or_offset():
