@@ -87,19 +87,8 @@ def assess_packages(number: int, night: Night, jobs: list[Job], done: Callable[[
 @flow(name="nightly", task_runner=_runner, persist_result=False)
 def nightly(study: str, *, retry_failed: bool = False) -> Any:  # noqa: ANN401  (a result or a failed state)
     """Run a night over the study folder ``study``; ``retry_failed`` assesses again what took too long, died or made the program fail."""
-    call = _call.get() or _Call(Options(retry_failed=retry_failed))
-    call.has_begun = True
-    try:
-        with open_night(Path(study), call.options) as night:
-            arrivals = receive(night)
-            while jobs := pending(night, arrivals):
-                _assess(night, jobs)
-            result = publish_night(night)
-    except (InputError, GateRefused) as refusal:
-        create_markdown_artifact(f"**Nothing was published.** {refusal}", key="night")
-        return Failed(message=str(refusal), data=refusal)
-    _show(result)
-    return result
+    # A thin body: a service hands the flow to a child with all that its body names, and by name only what is a function of a module.
+    return _night(Path(study), Options(retry_failed=retry_failed))
 
 
 def run_flow(study: Path, options: Options) -> NightResult:
@@ -123,6 +112,23 @@ def run_flow(study: Path, options: Options) -> NightResult:
     if not call.has_begun:
         raise EngineFailed(state.message or state.name or "no reason given")
     return cast("NightResult", state.result())
+
+
+def _night(study: Path, options: Options) -> Any:  # noqa: ANN401  (a result or a failed state)
+    """Run the steps of a night; a call from this process brings options of its own."""
+    call = _call.get() or _Call(options)
+    call.has_begun = True
+    try:
+        with open_night(study, call.options) as night:
+            arrivals = receive(night)
+            while jobs := pending(night, arrivals):
+                _assess(night, jobs)
+            result = publish_night(night)
+    except (InputError, GateRefused) as refusal:
+        create_markdown_artifact(f"**Nothing was published.** {refusal}", key="night")
+        return Failed(message=str(refusal), data=refusal)
+    _show(result)
+    return result
 
 
 def _assess(night: Night, jobs: list[Job]) -> None:

@@ -7,10 +7,10 @@ these variables keeps it. Figures: measured with Prefect 3.9 ([C]); without the 
 from __future__ import annotations
 
 import os
-from typing import TYPE_CHECKING
+from pathlib import Path
 
-if TYPE_CHECKING:
-    from pathlib import Path
+from flows.flow_server import live_server
+from flows.intake.durable import make_folder
 
 DEFAULTS = {
     "DO_NOT_TRACK": "1",
@@ -18,7 +18,7 @@ DEFAULTS = {
     "PREFECT_SERVER_UI_SHOW_PROMOTIONAL_CONTENT": "false",
     "PREFECT_TELEMETRY_ENABLE_RESOURCE_METRICS": "false",
     "PREFECT_SERVER_REGISTER_BLOCKS_ON_START": "false",
-    "PREFECT_SERVER_EPHEMERAL_STARTUP_TIMEOUT_SECONDS": "180",
+    "PREFECT_SERVER_EPHEMERAL_STARTUP_TIMEOUT_SECONDS": "90",
     "PREFECT_LOGGING_LEVEL": "WARNING",
     "PREFECT_SERVER_LOGGING_LEVEL": "CRITICAL",
     "PREFECT_LOGGING_TO_API_WHEN_MISSING_FLOW": "ignore",
@@ -36,6 +36,14 @@ DEFAULTS = {
 
 
 def settle(store: Path) -> None:
-    """Put the settings in place, with the orchestration's home in ``store``; what the environment holds already stays."""
+    """Put the settings in place, with the orchestration's home in ``store``; what the environment holds already stays.
+
+    Where the study is served, its server is used; otherwise a night starts one of its own and ends it.
+    """
     for name, value in {**DEFAULTS, "PREFECT_HOME": str(store / "prefect")}.items():
         os.environ.setdefault(name, value)
+    make_folder(Path(os.environ["PREFECT_HOME"]))  # it makes its home itself, but not the folders above
+    if "PREFECT_API_URL" not in os.environ:
+        url = live_server(store)
+        if url is not None:
+            os.environ["PREFECT_API_URL"] = url

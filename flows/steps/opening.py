@@ -30,7 +30,7 @@ if TYPE_CHECKING:
     from flows.study.protocol import Protocol
 
 URL_VARIABLE = "BEATGATE_DATABASE_URL"
-_LOCK = "night.lock"
+LOCK_NAME = "night.lock"
 
 
 class AlreadyRunning(InputError):  # noqa: N818  (an outcome with a remedy, not a fault of the program)
@@ -108,12 +108,12 @@ def open_night(study: Path, options: Options) -> Iterator[Night]:
 def _held(folder: Path) -> Iterator[None]:
     """Hold the kernel's lock on the store: it ends with this process, however that ends."""
     make_folder(folder)
-    with (folder / _LOCK).open("ab") as handle:
+    with (folder / LOCK_NAME).open("ab") as handle:
         try:
             fcntl.flock(handle, fcntl.LOCK_EX | fcntl.LOCK_NB)
         except BlockingIOError:
             problem = "a night is already running"
-            raise AlreadyRunning(problem, file=str(folder / _LOCK), remedy="Wait until it has ended.") from None
+            raise AlreadyRunning(problem, file=str(folder / LOCK_NAME), remedy="Wait until it has ended.") from None
         yield
 
 

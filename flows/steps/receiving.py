@@ -16,7 +16,6 @@ from flows.workers import Job
 if TYPE_CHECKING:
     from collections.abc import Mapping
 
-    from flows.intake.register import Entry
     from flows.steps.opening import Night
 
 _RETRIED = {Trouble.PROGRAM, Trouble.TIME_OUT, Trouble.DIED}
@@ -30,8 +29,9 @@ def receive(night: Night) -> list[Arrival]:
 def pending(night: Night, arrivals: list[Arrival]) -> list[Job]:
     """Register what arrived, in the light of what could be assessed so far, and return what is still to be assessed, sorted.
 
-    Call it again after these were assessed: a package that turned out to be unusable is no version, so that an older one may be in force
-    again and wait for its assessment. An empty list says that everything in force was assessed.
+    Older versions are assessed too: one that turns out to be unusable is no version, and so the numbers of the others, and what is in
+    force, do not depend on how many nights the uploads were spread over. Call it again after these were assessed: a refusal can make room
+    for what stood back behind it. An empty list says that there is nothing left to assess.
     """
     with writing(night.engine) as session:
         outcomes = lookups.outcomes(session, night.basis)
@@ -40,7 +40,7 @@ def pending(night: Night, arrivals: list[Arrival]) -> list[Job]:
         store.put_entries(session, entries, at=datetime.now(UTC))
     jobs = {}
     for entry in entries:
-        if entry.package_sha256 is None or not _is_in_force(entry):
+        if entry.package_sha256 is None or entry.version is None:
             continue
         key = (entry.site, entry.package_sha256)
         if key not in night.tried and _is_wanted(night, outcomes.get(key)):
@@ -56,10 +56,6 @@ def _is_wanted(night: Night, outcome: Mapping[str, Any] | None) -> bool:
     if outcome["status"] == "assessed":
         return not evidence_files.is_there(night.store, outcome["key"])
     return night.options.retry_failed and outcome["trouble"] in _RETRIED
-
-
-def _is_in_force(entry: Entry) -> bool:
-    return entry.version is not None and entry.status != "superseded"
 
 
 def _kept(night: Night, arrival: Arrival) -> Arrival:
