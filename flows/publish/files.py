@@ -6,20 +6,16 @@ apostrophes are followed by such a sign gains one too, so that taking one away a
 
 from __future__ import annotations
 
-import csv
 import io
 import math
 from datetime import UTC, datetime
-from typing import TYPE_CHECKING, Any
+from typing import Any
 
 import pandas as pd
 import pyarrow as pa
 import pyarrow.parquet as pq
 
 from checks.tables.kinds import CONTRACT
-
-if TYPE_CHECKING:
-    from collections.abc import Iterable
 
 _FORMULA = ("=", "+", "-", "@", "\t", "\r")
 _TYPES = {
@@ -33,6 +29,7 @@ _TYPES = {
     "datetime64[us, UTC]": pa.timestamp("us", tz="UTC"),
 }
 _ROW_GROUP = 100_000
+_QUOTE = '"'
 
 
 def parquet_bytes(name: str, table: pd.DataFrame) -> bytes:
@@ -56,11 +53,9 @@ def parquet_bytes(name: str, table: pd.DataFrame) -> bytes:
 
 def csv_bytes(table: pd.DataFrame) -> bytes:
     """Return the table as UTF-8 CSV: a header, line ends of one sign, missing cells empty, floats by their shortest form."""
-    text = io.StringIO()
-    writer = csv.writer(text, lineterminator="\n")
-    writer.writerow(table.columns)
-    writer.writerows(zip(*(_cells(_plain_values(table[column])) for column in table.columns), strict=True))
-    return text.getvalue().encode()
+    columns = [[_cell(value) for value in _plain_values(table[column])] for column in table.columns]
+    lines = [",".join(map(_quoted, map(str, table.columns))), *(",".join(row) for row in zip(*columns, strict=True))]
+    return "".join(f"{line}\n" for line in lines).encode()
 
 
 def plain_rows(table: pd.DataFrame) -> list[dict[str, Any]]:
@@ -81,10 +76,6 @@ def _plain_values(column: pd.Series) -> list[object]:
     return [value.to_pydatetime() if isinstance(value, pd.Timestamp) else value for value in values]
 
 
-def _cells(values: Iterable[object]) -> list[str]:
-    return [_cell(value) for value in values]
-
-
 def _cell(value: object) -> str:
     if value is None:
         return ""
@@ -98,4 +89,9 @@ def _cell(value: object) -> str:
     if isinstance(value, int):
         return str(value)
     text = str(value)
-    return f"'{text}" if text.lstrip("'").startswith(_FORMULA) else text
+    return _quoted(f"'{text}" if text.lstrip("'").startswith(_FORMULA) else text)
+
+
+def _quoted(text: str) -> str:
+    """Return the text in quotes where it needs them: the standard library's writer leaves a lone carriage return bare."""
+    return f'"{text.replace(_QUOTE, _QUOTE * 2)}"' if any(sign in text for sign in (_QUOTE, ",", "\n", "\r")) else text

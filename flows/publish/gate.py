@@ -25,7 +25,7 @@ _SHOWN = 10
 
 
 @dataclass(frozen=True, slots=True)
-class Tested:
+class Answer:
     """A promise that was put to the test: how many ``rows`` it speaks of, how many are ``failing`` and the first of them by name.
 
     ``crashed`` says what went wrong where the test itself did; the promise then counts as broken.
@@ -51,13 +51,13 @@ class Tested:
         return f"{self.table}: {self.failing} of {self.rows} rows break {self.promise!r}: {'; '.join(self.examples)}{more}"
 
 
-def tested(tables: Mapping[str, pd.DataFrame]) -> list[Tested]:
+def answers(tables: Mapping[str, pd.DataFrame]) -> list[Answer]:
     """Return every promise about the seven tables, tested."""
     with _quiet_engine() as engine:
-        return [_tested(engine, promise) for promise in promises(tables)]
+        return [_answer(engine, promise) for promise in promises(tables)]
 
 
-def _tested(engine: Any, promise: Promise) -> Tested:  # noqa: ANN401  (the engine's own type)
+def _answer(engine: Any, promise: Promise) -> Answer:  # noqa: ANN401  (the engine's own type)
     import great_expectations as gx  # noqa: PLC0415  (3 s; only a night needs it)
 
     rows = len(promise.view)
@@ -68,11 +68,11 @@ def _tested(engine: Any, promise: Promise) -> Tested:  # noqa: ANN401  (the engi
         batch = engine.get_batch({"dataframe": promise.view.reset_index(drop=True)})
         answer = batch.validate(expectation, result_format="BOOLEAN_ONLY")
     except Exception as failure:  # noqa: BLE001  (whatever broke the test, the release must not pass)
-        return Tested(promise.table, promise.sentence, rows, len(failing), examples, f"{type(failure).__name__}: {failure}")
+        return Answer(promise.table, promise.sentence, rows, len(failing), examples, f"{type(failure).__name__}: {failure}")
     crashed = _crash(answer.exception_info)
     if crashed is None and bool(answer.success) != failing.empty:
         crashed = f"the engine says {'kept' if answer.success else 'broken'}, the mask marks {len(failing)} rows"
-    return Tested(promise.table, promise.sentence, rows, len(failing), examples, crashed)
+    return Answer(promise.table, promise.sentence, rows, len(failing), examples, crashed)
 
 
 def _crash(exception_info: Any) -> str | None:  # noqa: ANN401  (flat, or one a metric)

@@ -24,7 +24,7 @@ if TYPE_CHECKING:
     import pandas as pd
 
     from checks.check import Check
-    from flows.publish.gate import Tested
+    from flows.publish.gate import Answer
     from flows.study.protocol import Protocol
 
 Rows = list[dict[str, Any]]
@@ -42,7 +42,7 @@ class Material:
     rows: Mapping[str, Rows]
     protocol: Protocol
     checks: Sequence[Check]
-    gate: Sequence[Tested]
+    gate: Sequence[Answer]
     software_version: str
 
 
@@ -50,7 +50,7 @@ def material(
     tables: Mapping[str, pd.DataFrame],
     protocol: Protocol,
     checks: Sequence[Check],
-    gate: Sequence[Tested],
+    gate: Sequence[Answer],
     software_version: str,
 ) -> Material:
     """Return the material of a night, its tables as plain rows; of the beats, which are many, only what is counted."""

@@ -12,7 +12,7 @@ from typing import TYPE_CHECKING, Any
 from checks import ALL as CHECKS
 from flows.catalogue import evidence_files, lookups, store
 from flows.catalogue.engine import reading, writing
-from flows.publish.gate import tested
+from flows.publish.gate import answers
 from flows.publish.refusal import GateRefused
 from flows.publish.release import UNNAMED, publish, seal, staged, write_tables
 from flows.publish.tables import build, schemas
@@ -61,8 +61,8 @@ def publish_night(night: Night) -> NightResult:
         outcomes = {str(row["key"]): row for row in lookups.outcomes(session, night.basis).values()}
     keys = dict(zip(columns["acquisitions"]["acquisition"], columns["acquisitions"]["key"], strict=True))
     tables = build(columns)
-    answers = tested(tables)
-    problems = [answer.problem() for answer in answers if not answer.kept]
+    found = answers(tables)
+    problems = [answer.problem() for answer in found if not answer.kept]
     if problems:
         raise GateRefused(problems)
 
@@ -70,7 +70,7 @@ def publish_night(night: Night) -> NightResult:
         key = keys[acquisition]
         return evidence_files.load(night.store, key, str(outcomes[key]["evidence_sha256"]))
 
-    shown = material(tables, night.protocol, CHECKS, answers, night.basis.software_version)
+    shown = material(tables, night.protocol, CHECKS, found, night.basis.software_version)
     with staged(night.store) as folder:
         write_tables(folder, tables)
         write_report(folder / "report", night_view(shown, UNNAMED), acquisition_views(shown, evidence))

@@ -4,17 +4,20 @@ import csv
 import fcntl
 import hashlib
 import io
+import json
 import os
 import subprocess
 import sys
 from datetime import datetime
 from pathlib import Path
+from types import SimpleNamespace
 
 import pandas as pd
 import pyarrow.parquet as pq
 import pytest
 import sqlalchemy as sa
 
+from flows import nightly
 from flows.catalogue import evidence_files, trail
 from flows.catalogue.engine import open_catalogue, reading
 from flows.catalogue.models import AuditRow, NightRow
@@ -39,7 +42,7 @@ def light(request, monkeypatch):
     """No children, plain pages and no gate, unless a test asks for the real thing; each is tested where it stands."""
     monkeypatch.setattr(publishing, "write_report", plain_report)
     if "real_gate" not in request.fixturenames:
-        monkeypatch.setattr(publishing, "tested", lambda _tables: [])
+        monkeypatch.setattr(publishing, "answers", lambda _tables: [])
     if "real_children" not in request.fixturenames:
         monkeypatch.setattr(opening, "Workers", InProcess)
 
@@ -130,7 +133,7 @@ def test_the_same_inbox_gives_the_same_bytes_in_another_place_time_zone_and_orde
         "from flows.steps.opening import Options\n"
         "from tests.flows.made_study import InProcess, plain_report\n"
         "from tests.flows.made_work import work\n"
-        "opening.Workers, publishing.write_report, publishing.tested = InProcess, plain_report, lambda _tables: []\n"
+        "opening.Workers, publishing.write_report, publishing.answers = InProcess, plain_report, lambda _tables: []\n"
         "run_night_plain(Path(sys.argv[1]), Options(work=work))\n"
     )
     root = Path(__file__).parents[2]
@@ -371,3 +374,43 @@ def test_a_database_url_is_taken_from_the_environment_or_the_options(study, tmp_
     run_night_plain(study, Options(work=work, database_url=f"sqlite:///{tmp_path / 'from-options.db'}"))
     assert {path.name for path in tmp_path.glob("*.db")} == {"from-environment.db", "from-options.db"}
     assert not (study / "store" / "catalogue.db").exists()
+
+
+def test_killed_anywhere_the_next_night_ends_the_same(tmp_path):
+    script = Path(__file__).with_name("made_kills.py")
+    environment = os.environ | {"PYTHONPATH": str(Path(__file__).parents[2])}
+    run = subprocess.run([sys.executable, script, tmp_path, "7"], env=environment, capture_output=True, text=True, check=False)
+    assert run.returncode == 0, run.stderr
+    answer = json.loads(run.stdout)
+    assert answer["moved"]
+    assert answer["total"] > 100
+    assert len(answer["found"]) >= 7
+    for found in answer["found"]:
+        assert all(found.values()), found
+
+
+def test_where_the_orchestration_does_not_start_the_night_runs_without_it(study, monkeypatch):
+    class EngineFailed(Exception):  # noqa: N818  (the name of the real one)
+        pass
+
+    def fails(_study, _options):
+        message = "RuntimeError: no server"
+        raise EngineFailed(message)
+
+    fake = SimpleNamespace(EngineFailed=EngineFailed, run_flow=fails)
+    monkeypatch.setitem(sys.modules, "flows.nightly_flow", fake)
+    monkeypatch.setattr(nightly, "settle", lambda _store: None)
+    send(study, "H-1-baseline")
+    result = nightly.run_night(study, OPTIONS)
+    assert result.problems == ("the orchestration did not start, the night ran without it: RuntimeError: no server",)
+    assert statuses(study) == {"H-1-baseline": "accepted"}
+
+
+def test_a_result_reads_as_lines(study):
+    send(study, "H-1-baseline")
+    send(study, "raise", note="raise")
+    lines = str(run_night_plain(study, OPTIONS)).splitlines()
+    assert lines[:3] == ["harbour  1 accepted, 1 quarantined", "weir     nothing", "assessed tonight: 2"]
+    assert lines[3].startswith("look at: harbour/raise: the program could not assess this package")
+    assert lines[4].startswith("release ")
+    assert "(unchanged)" in str(run_night_plain(study, OPTIONS))

@@ -10,7 +10,7 @@ from tests.flows.made_rows import built, found_rows, package_row, published_rows
 
 def broken(rows):
     """The (table, promise) pairs that the gate finds broken, with the number of rows it names."""
-    return {(one.table, one.promise): one.failing for one in gate.tested(built(rows)) if not one.kept}
+    return {(one.table, one.promise): one.failing for one in gate.answers(built(rows)) if not one.kept}
 
 
 def only(monkeypatch, table, sentence):
@@ -27,7 +27,7 @@ def changed(rows, table, position, **values):
 
 
 def test_sound_tables_keep_every_promise():
-    results = gate.tested(built(published_rows()))
+    results = gate.answers(built(published_rows()))
     assert [one.problem() for one in results if not one.kept] == []
     assert {one.table for one in results} == {"packages", "acquisitions", "runs", "beats", "rejections", "indices", "changes"}
     assert sum(one.rows > 0 for one in results) > 20
@@ -84,10 +84,10 @@ def test_the_problem_names_rows_and_stops_at_ten(monkeypatch):
     found = found_rows(rejected=())
     rows = published_rows(found=found)
     rows["beats"] = [row | {"beat": 1} for row in rows["beats"]]
-    (problem,) = [one.problem() for one in gate.tested(built(rows))]
+    (problem,) = [one.problem() for one in gate.answers(built(rows))]
     assert problem.startswith("beats: 8 of 8 rows break")
     assert "acquisition H-1-baseline, run rest-1, beat 1" in problem
-    long = gate.Tested("beats", "p", 30, 12, tuple("abcdefghij"))
+    long = gate.Answer("beats", "p", 30, 12, tuple("abcdefghij"))
     assert long.problem().endswith("and 2 more")
 
 
@@ -99,7 +99,7 @@ def test_a_test_that_crashes_is_told_from_data_that_failed(monkeypatch):
 
     sound = promises.promises
     monkeypatch.setattr(gate, "promises", sabotaged)
-    for one in gate.tested(built(published_rows())):
+    for one in gate.answers(built(published_rows())):
         assert not one.kept
         assert one.failing == 0
         assert one.crashed
@@ -109,6 +109,6 @@ def test_a_test_that_crashes_is_told_from_data_that_failed(monkeypatch):
 def test_an_engine_that_disagrees_with_the_mask_lets_nothing_pass(monkeypatch):
     sound = promises.promises
     monkeypatch.setattr(gate, "promises", lambda tables: [dataclasses.replace(one, broken=~one.broken) for one in sound(tables)][:1])
-    (one,) = gate.tested(built(published_rows()))
+    (one,) = gate.answers(built(published_rows()))
     assert not one.kept
     assert "the engine says kept, the mask marks 1 rows" in one.problem()
