@@ -149,11 +149,16 @@ def _manifest(recipe: Recipe, runs: Mapping[str, RecordedRun]) -> Facts:
         "recorded_at": identity.recorded_at.isoformat(timespec="seconds"),
         "chamber": recipe.heart.chamber,
         "rhythm": "atrial-fibrillation" if fibrillating else "sinus",
-        "subject_facts": {} if recipe.bsa_m2 is None else {"bsa_m2": recipe.bsa_m2},
+        "subject_facts": _subject_facts(recipe),
         "sensors": {"pressure": {"kind": "tip-manometer"}, "volume": {"kind": "conductance"}},
         "calibration": {"pressure": _pressure_calibration(recipe), "volume": _volume_calibration(recipe, runs)},
         "runs": [_run_facts(recipe, plan, runs[plan.run]) for plan in recipe.runs],
     }
+
+
+def _subject_facts(recipe: Recipe) -> Facts:
+    facts: Facts = {} if recipe.bsa_m2 is None else {"bsa_m2": recipe.bsa_m2}
+    return facts | ({"conditions": list(recipe.heart.conditions)} if recipe.heart.conditions else {})
 
 
 def _pressure_calibration(recipe: Recipe) -> Facts:

@@ -68,7 +68,7 @@ def record(solution: Solution, catheter: Catheter, rate_hz: float, rng: np.rando
     volume = catheter.volume_gain * volume + catheter.volume_shift_ml
     beats = solution.schedule
     r_s = seconds(beats.onset - solution.first) - solution.heart.electromechanical_delay_s
-    lead = ecg_mv(time_s, r_s, beats.rr_before_s, beats.premature, atrial=not solution.conditions.fibrillating)
+    lead = ecg_mv(time_s, r_s, beats.rr_before_s, beats.premature, atrial=not solution.conditions.fibrillating, aberrant=beats.aberrant)
     return Signals(
         time_s=time_s,
         pressure_mmhg=_stepped(pressure + catheter.pressure_noise_mmhg * rng.standard_normal(count), catheter.pressure_step_mmhg),

@@ -3,12 +3,12 @@
 Pressure is ``e Ees (V - V0) + (1 - e) EDPVR(V)`` with the activation ``e`` between 0 and 1: the time-varying elastance of Suga and
 Sagawa 1974 (Circ Res 35:117, from memory), made so that at e = 1 the end-systolic relation is the straight line ``Ees (V - V0)``.
 The passive curve ``A (exp(B (V - V0)) - 1)`` and the parameter values are house choices that keep each heart inside the ranges
-published for its kind.
+published for its kind. A bent end-systolic relation is ``a (V - V0)^2 + b (V - V0)`` (Kass 1989, Circulation 79:167, from memory).
 """
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 
 @dataclass(frozen=True, slots=True)
@@ -17,7 +17,9 @@ class Heart:
 
     Resistances in mmHg s/mL, inertances in mmHg s2/mL, compliance in mL/mmHg. ``activation_scale`` multiplies the published time
     scale of activation; ``atrial_kick_mmhg`` is what the atrium adds to the filling pressure before a beat; contraction begins
-    ``electromechanical_delay_s`` after the R wave.
+    ``electromechanical_delay_s`` after the R wave. ``espvr_bend_mmhg_per_ml2`` is the a of a bent end-systolic relation (below 0: the
+    slope falls with volume; ``ees_mmhg_per_ml`` is then the slope at V0). The leaks are what passes a shut valve backwards, in mL/s
+    at 1 mmHg, growing with the root of the gradient as through an orifice. ``conditions`` are what a site would declare.
     """
 
     name: str
@@ -40,6 +42,10 @@ class Heart:
     characteristic_resistance: float = 0.05
     downstream_pressure_mmhg: float = 4.0
     electromechanical_delay_s: float = 0.04
+    espvr_bend_mmhg_per_ml2: float = 0.0
+    inlet_leak: float = 0.0
+    outlet_leak: float = 0.0
+    conditions: tuple[str, ...] = ()
 
     @property
     def rr_s(self) -> float:
@@ -47,7 +53,7 @@ class Heart:
         return 60.0 / self.heart_rate_per_min
 
 
-HEARTS = (
+LEFT_HEARTS = (
     Heart("normal", "LV", 68.0, 2.4, 8.0, 8.0, 1.20, 1.5),
     Heart("small", "LV", 76.0, 3.4, 6.0, 8.0, 1.55, 1.1, passive_exponent_per_ml=0.027),
     Heart("large", "LV", 58.0, 1.7, 12.0, 9.0, 1.00, 1.9, passive_exponent_per_ml=0.0145),
@@ -55,21 +61,26 @@ HEARTS = (
     Heart("failing", "LV", 80.0, 1.05, 25.0, 15.0, 1.00, 1.5, passive_exponent_per_ml=0.0165, relaxation_exponent=12.0),
     Heart("stiff", "LV", 70.0, 3.2, 5.0, 14.0, 1.35, 1.0, passive_exponent_per_ml=0.029, relaxation_exponent=12.0),
     Heart("high-afterload", "LV", 66.0, 2.8, 8.0, 10.0, 1.75, 1.1),
-    Heart(
-        "right",
-        "RV",
-        72.0,
-        0.55,
-        25.0,
-        6.0,
-        0.13,
-        3.2,
-        passive_exponent_per_ml=0.0125,
-        relaxation_exponent=21.9,
-        atrial_kick_mmhg=3.0,
-        characteristic_resistance=0.02,
-        downstream_pressure_mmhg=7.0,
-    ),
+)
+
+RIGHT = Heart(
+    "right",
+    "RV",
+    72.0,
+    0.55,
+    25.0,
+    6.0,
+    0.13,
+    3.2,
+    passive_exponent_per_ml=0.0125,
+    relaxation_exponent=21.9,
+    atrial_kick_mmhg=3.0,
+    characteristic_resistance=0.02,
+    downstream_pressure_mmhg=7.0,
+)
+
+RIGHT_HEARTS = (
+    RIGHT,
     Heart(
         "right-loaded",
         "RV",
@@ -85,12 +96,80 @@ HEARTS = (
         characteristic_resistance=0.04,
         downstream_pressure_mmhg=8.0,
     ),
+    replace(
+        RIGHT,
+        name="right-small",
+        heart_rate_per_min=80.0,
+        ees_mmhg_per_ml=0.75,
+        v0_ml=16.0,
+        filling_pressure_mmhg=5.5,
+        peripheral_resistance=0.16,
+        compliance_ml_per_mmhg=2.4,
+        passive_exponent_per_ml=0.0165,
+    ),
+    replace(
+        RIGHT,
+        name="right-large",
+        heart_rate_per_min=60.0,
+        ees_mmhg_per_ml=0.40,
+        v0_ml=35.0,
+        filling_pressure_mmhg=7.0,
+        peripheral_resistance=0.12,
+        compliance_ml_per_mmhg=3.8,
+        passive_exponent_per_ml=0.0095,
+    ),
+    replace(
+        RIGHT,
+        name="right-fast",
+        heart_rate_per_min=104.0,
+        ees_mmhg_per_ml=0.7,
+        v0_ml=22.0,
+        filling_pressure_mmhg=7.5,
+        peripheral_resistance=0.11,
+        compliance_ml_per_mmhg=3.0,
+        activation_scale=0.8,
+        passive_exponent_per_ml=0.0135,
+    ),
+    replace(
+        RIGHT,
+        name="right-failing",
+        heart_rate_per_min=84.0,
+        ees_mmhg_per_ml=0.36,
+        v0_ml=36.0,
+        filling_pressure_mmhg=10.5,
+        peripheral_resistance=0.19,
+        compliance_ml_per_mmhg=2.4,
+        relaxation_exponent=16.0,
+    ),
+    replace(
+        RIGHT,
+        name="right-stiff",
+        heart_rate_per_min=74.0,
+        ees_mmhg_per_ml=0.7,
+        v0_ml=18.0,
+        filling_pressure_mmhg=10.0,
+        peripheral_resistance=0.20,
+        compliance_ml_per_mmhg=2.2,
+        passive_exponent_per_ml=0.0195,
+        relaxation_exponent=16.0,
+    ),
 )
+
+HEARTS = LEFT_HEARTS + RIGHT_HEARTS
+"""Ventricles with straight end-systolic relations and tight valves."""
+
+UNUSUAL_HEARTS = (
+    replace(LEFT_HEARTS[0], name="bent", ees_mmhg_per_ml=3.6, espvr_bend_mmhg_per_ml2=-0.012),
+    replace(LEFT_HEARTS[0], name="mitral-leak", filling_pressure_mmhg=11.0, inlet_leak=10.0, conditions=("mitral-regurgitation",)),
+    replace(LEFT_HEARTS[0], name="aortic-leak", filling_pressure_mmhg=10.0, outlet_leak=4.5, conditions=("aortic-regurgitation",)),
+    replace(RIGHT, name="tricuspid-leak", filling_pressure_mmhg=7.5, inlet_leak=14.0, conditions=("tricuspid-regurgitation",)),
+)
+"""Ventricles in which a rule of thumb does not hold: a bent end-systolic relation, or a valve that leaks while it should be shut."""
 
 
 def heart_named(name: str) -> Heart:
     """Return the heart of that name.
 
-    Raises KeyError for a name that `HEARTS` does not hold.
+    Raises KeyError for a name that neither `HEARTS` nor `UNUSUAL_HEARTS` holds.
     """
-    return {heart.name: heart for heart in HEARTS}[name]
+    return {heart.name: heart for heart in HEARTS + UNUSUAL_HEARTS}[name]

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import functools
 from collections.abc import Mapping
 from dataclasses import dataclass
 from types import MappingProxyType
@@ -9,7 +10,7 @@ from types import MappingProxyType
 import numpy as np
 
 from flows.sources.simulated.catheter import Catheter, Signals, record
-from flows.sources.simulated.circulation import solve
+from flows.sources.simulated.circulation import Solution, solve
 from flows.sources.simulated.heart import Heart, heart_named
 from flows.sources.simulated.rhythm import Conditions, Occlusion
 from flows.sources.simulated.truth import RunTruth, run_truth
@@ -55,11 +56,20 @@ def recorded(
     }
 
 
+@functools.lru_cache(maxsize=24)
+def _solved(heart: Heart, conditions: Conditions, seed: int) -> tuple[Solution, RunTruth]:
+    """Return a run solved once, for every catheter, rate and fault of the sensors that looks at it; nobody may write into it."""
+    solution = solve(heart, conditions, seed)
+    for name in ("pressure_mmhg", "volume_ml", "aortic_pressure_mmhg"):
+        getattr(solution, name).setflags(write=False)
+    return solution, run_truth(solution)
+
+
 def recorded_run(
     heart: Heart, run: str, conditions: Conditions, *, catheter: Catheter, rate_hz: float, seed: int, hour: float = 0.0
 ) -> RecordedRun:
     """Return one run of a heart, beginning ``hour`` hours into the acquisition."""
-    solution = solve(heart, conditions, seed)
+    solution, truth = _solved(heart, conditions, seed)
     occlusion = conditions.occlusion
     events: tuple[tuple[float, str], ...] = ()
     if occlusion is not None:
@@ -72,6 +82,6 @@ def recorded_run(
         chamber=heart.chamber,
         sampling_rate_hz=rate_hz,
         signals=record(solution, catheter, rate_hz, np.random.default_rng([seed, 1]), hour),
-        truth=run_truth(solution),
+        truth=truth,
         events=events,
     )

@@ -48,7 +48,9 @@ class Conditions:
     """What happens during one run.
 
     ``rr_spread`` is the relative SD of the cycle length; ``premature_s`` are the instants about which a premature beat falls, at
-    ``coupling`` of the heart's own cycle length; ``fibrillating`` replaces the sinus rhythm by an irregular one without an atrial kick.
+    ``coupling`` of the heart's own cycle length; ``fibrillating`` replaces the sinus rhythm by an irregular one without an atrial kick,
+    its cycles spread by ``irregularity``. The first beat after each of ``aberrant_s`` is on time but conducted another way: a wide
+    complex, and a force of ``aberrant_force``. ``filling_trend_per_s`` lets the filling pressure rise or fall by that fraction a second.
     """
 
     duration_s: float = 30.0
@@ -58,6 +60,10 @@ class Conditions:
     fibrillating: bool = False
     occlusion: Occlusion | None = None
     breathing: Breathing | None = None
+    irregularity: float = 0.22
+    aberrant_s: tuple[float, ...] = ()
+    aberrant_force: float = 0.75
+    filling_trend_per_s: float = 0.0
 
 
 @dataclass(frozen=True, slots=True)
@@ -71,6 +77,7 @@ class Schedule:
     premature: tuple[bool, ...]
     force: FloatArray
     rr_before_s: FloatArray
+    aberrant: tuple[bool, ...]
 
 
 def seconds(steps: IntArray) -> FloatArray:
@@ -82,7 +89,8 @@ def schedule(rr_s: float, conditions: Conditions, warm_up_s: float, rng: np.rand
     """Return the beats of a run of ``warm_up_s + conditions.duration_s`` seconds and one beat beyond."""
     ends_s = warm_up_s + conditions.duration_s + 2.0 * rr_s
     pending = sorted(warm_up_s + at for at in conditions.premature_s)
-    onsets, premature, force, before = [0.1], [False], [1.0], [rr_s]
+    astray = sorted(warm_up_s + at for at in conditions.aberrant_s)
+    onsets, premature, force, before, aberrant = [0.1], [False], [1.0], [rr_s], [False]
     slow, pause_s, potentiation = 0.0, 0.0, 0.0
     while onsets[-1] < ends_s:
         now = onsets[-1]
@@ -100,6 +108,11 @@ def schedule(rr_s: float, conditions: Conditions, warm_up_s: float, rng: np.rand
         strength = _restitution(cycle_s, rr_s) if is_premature else 1.0 + potentiation
         potentiation = POTENTIATION * (1.0 - strength) if is_premature else potentiation * POTENTIATION_DECAY
         onsets.append(now + max(round(cycle_s / STEP_S), 1) * STEP_S)
+        is_aberrant = bool(astray) and not is_premature and onsets[-1] >= astray[0]
+        if is_aberrant:
+            astray.pop(0)
+            strength *= conditions.aberrant_force
+        aberrant.append(is_aberrant)
         premature.append(is_premature)
         force.append(strength if abs(strength - 1.0) > 1e-3 else 1.0)  # potentiation that has died away is none
         before.append(cycle_s)
@@ -108,6 +121,7 @@ def schedule(rr_s: float, conditions: Conditions, warm_up_s: float, rng: np.rand
         premature=tuple(premature),
         force=np.asarray(force, dtype=np.float64),
         rr_before_s=np.asarray(before, dtype=np.float64),
+        aberrant=tuple(aberrant),
     )
 
 
@@ -123,7 +137,7 @@ def _restitution(interval_s: float, own_rr_s: float) -> float:
 def _sinus_cycle_s(rr_s: float, conditions: Conditions, clock_s: float, run_s: float, slow: float) -> float:
     """Return the next cycle length before any premature beat."""
     if conditions.fibrillating:
-        return rr_s * min(max(math.exp(0.22 * slow), 0.6), 1.8)
+        return rr_s * min(max(math.exp(conditions.irregularity * slow), 0.6), 1.8)
     cycle_s = rr_s * (1.0 + conditions.rr_spread * slow)
     if conditions.breathing is not None:
         cycle_s *= 1.0 + conditions.breathing.sinus_depth * math.sin(2.0 * math.pi * conditions.breathing.rate_per_min / 60.0 * clock_s)

@@ -41,6 +41,7 @@ class BeatTruth:
     dpdt_max_mmhg_per_s: FloatArray
     dpdt_min_mmhg_per_s: FloatArray
     in_ramp: tuple[bool, ...]
+    aberrant: tuple[bool, ...]
 
     def __len__(self) -> int:
         """Return the number of complete beats."""
@@ -50,6 +51,11 @@ class BeatTruth:
     def sv_ml(self) -> FloatArray:
         """Return end-diastolic minus smallest volume, shape (n_beats,)."""
         return self.edv_ml - self.esv_ml
+
+    @property
+    def sound(self) -> NDArray[np.bool_]:
+        """Return which beats are neither premature nor conducted another way, shape (n_beats,)."""
+        return ~(np.asarray(self.premature) | np.asarray(self.aberrant))
 
     @property
     def ea_mmhg_per_ml(self) -> FloatArray:
@@ -64,8 +70,9 @@ class BeatTruth:
 
 @dataclass(frozen=True, slots=True)
 class RunTruth:
-    """What is true of a run as a whole; medians are over its beats that are not premature.
+    """What is true of a run as a whole; medians are over its sound beats.
 
+    Where the end-systolic relation is bent, Ees and V0 are the straight line through the true end-systolic points of the ramp.
     ``prsw_mmhg`` and ``vw_ml`` are the straight line of true stroke work on true end-diastolic volume over the ramp, NaN without one.
     """
 
@@ -83,6 +90,7 @@ class RunTruth:
     pmax_mmhg: float
     sw_mmhg_ml: float
     dpdt_max_mmhg_per_s: float
+    dpdt_min_mmhg_per_s: float
     prsw_mmhg: float
     vw_ml: float
 
@@ -93,14 +101,18 @@ def run_truth(solution: Solution) -> RunTruth:
     Raises ValueError when the run holds no complete beat.
     """
     beats = beat_truth(solution)
-    sound = ~np.asarray(beats.premature)
+    sound = beats.sound
     ramp = np.asarray(beats.in_ramp) & sound
     slope, volume_axis = stroke_work_line(beats, ramp)
+    heart = solution.heart
+    ees, v0 = heart.ees_mmhg_per_ml, heart.v0_ml
+    if heart.espvr_bend_mmhg_per_ml2:
+        ees, v0 = _line(beats.end_systolic_volume_ml[ramp], beats.esp_mmhg[ramp])
     return RunTruth(
         beats=beats,
         chamber=solution.heart.chamber,
-        ees_mmhg_per_ml=solution.heart.ees_mmhg_per_ml,
-        v0_ml=solution.heart.v0_ml,
+        ees_mmhg_per_ml=ees,
+        v0_ml=v0,
         ea_mmhg_per_ml=float(np.nanmedian(beats.ea_mmhg_per_ml[sound])),
         heart_rate_per_min=60.0 / float(np.median(beats.rr_s[sound])),
         edv_ml=float(np.median(beats.edv_ml[sound])),
@@ -111,6 +123,7 @@ def run_truth(solution: Solution) -> RunTruth:
         pmax_mmhg=float(np.median(beats.pmax_mmhg[sound])),
         sw_mmhg_ml=float(np.median(beats.sw_mmhg_ml[sound])),
         dpdt_max_mmhg_per_s=float(np.median(beats.dpdt_max_mmhg_per_s[sound])),
+        dpdt_min_mmhg_per_s=float(np.median(beats.dpdt_min_mmhg_per_s[sound])),
         prsw_mmhg=slope,
         vw_ml=volume_axis,
     )
@@ -122,9 +135,14 @@ def stroke_work_line(beats: BeatTruth, chosen: NDArray[np.bool_]) -> tuple[float
     ``chosen`` has shape (n_beats,); with fewer than three beats both are NaN. The relation is not exactly straight in this model, so
     compare with an estimate over the same beats.
     """
-    if int(chosen.sum()) < 3:
+    return _line(beats.edv_ml[chosen], beats.sw_mmhg_ml[chosen])
+
+
+def _line(volume_ml: FloatArray, height: FloatArray) -> tuple[float, float]:
+    """Return slope and volume-axis intercept, NaN from fewer than three points."""
+    if volume_ml.size < 3:
         return np.nan, np.nan
-    slope, intercept = np.polyfit(beats.edv_ml[chosen], beats.sw_mmhg_ml[chosen], 1)
+    slope, intercept = np.polyfit(volume_ml, height, 1)
     return float(slope), float(-intercept / slope)
 
 
@@ -163,6 +181,7 @@ def beat_truth(solution: Solution) -> BeatTruth:
         dpdt_max_mmhg_per_s=rise,
         dpdt_min_mmhg_per_s=fall,
         in_ramp=_ramp(solution, begin_s, volume[starts[:-1]]),
+        aberrant=tuple(solution.schedule.aberrant[beat] for beat in chosen),
     )
 
 
