@@ -54,13 +54,18 @@ def check(
 
 
 @app.command(epilog="Example: beatgate nightly /srv/studies/tarn")
-def nightly(study: Annotated[Path, typer.Argument(help="A folder with protocol.toml and inbox/.")]) -> None:
+def nightly(
+    study: Annotated[Path, typer.Argument(help="A folder with protocol.toml and inbox/.")],
+    *,
+    retry_failed: Annotated[bool, typer.Option("--retry-failed", help="Assess again what took too long or broke the program.")] = False,
+) -> None:
     """Take in what sites uploaded, assess what is new, and publish one release."""
     from flows.nightly import run_night  # noqa: PLC0415
     from flows.publish.refusal import GateRefused  # noqa: PLC0415
+    from flows.steps.opening import Options  # noqa: PLC0415
 
     try:
-        result = run_night(study.resolve())
+        result = run_night(study.resolve(), Options(retry_failed=retry_failed))
     except GateRefused as refusal:
         problems = "\n".join(f"  {problem}" for problem in refusal.problems)
         sys.stderr.write(f"Nothing was published, the last release stands. The tables break a promise:\n{problems}\n")

@@ -142,18 +142,19 @@ def stand_in(monkeypatch, name, **functions):
 def test_a_night_that_ran_is_exit_code_0_whatever_it_found(invoke, monkeypatch, tmp_path):
     seen = []
 
-    def run_night(study):
-        seen.append(study)
+    def run_night(study, options):
+        seen.append((study, options.retry_failed))
         return "harbour  1 rejected\nlook at: much"
 
     stand_in(monkeypatch, "flows.nightly", run_night=run_night)
     code, out, _ = invoke("nightly", tmp_path)
     assert (code, out) == (0, "harbour  1 rejected\nlook at: much\n")
-    assert seen == [tmp_path.resolve()]
+    invoke("nightly", tmp_path, "--retry-failed")
+    assert seen == [(tmp_path.resolve(), False), (tmp_path.resolve(), True)]
 
 
 def test_a_night_without_a_study_is_exit_code_2(invoke, monkeypatch, tmp_path):
-    def run_night(study):
+    def run_night(study, _options):
         problem = "does not exist"
         raise InputError(problem, file=str(study), remedy="Write one.")
 
@@ -164,7 +165,7 @@ def test_a_night_without_a_study_is_exit_code_2(invoke, monkeypatch, tmp_path):
 
 
 def test_a_refused_release_is_exit_code_1_with_every_problem(invoke, monkeypatch, tmp_path):
-    def run_night(study):
+    def run_night(study, _options):
         raise GateRefused([f"beats: 3 rows of {study.name}", "runs: 1 row"])
 
     stand_in(monkeypatch, "flows.nightly", run_night=run_night)
@@ -176,7 +177,7 @@ def test_a_refused_release_is_exit_code_1_with_every_problem(invoke, monkeypatch
 
 
 def test_a_failed_disk_is_no_success(invoke, monkeypatch, tmp_path):
-    def run_night(_study):
+    def run_night(_study, _options):
         raise OSError(28, "No space left on device", "store/objects")
 
     stand_in(monkeypatch, "flows.nightly", run_night=run_night)
