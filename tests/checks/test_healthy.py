@@ -11,6 +11,7 @@ from tests.checks.made_acquisitions import judged, sound
 from tests.checks.made_subjects import (
     BREATHING,
     BREATHING_RAMP,
+    COARSE,
     FIBRILLATING,
     FIBRILLATING_RAMP,
     QUANTISED,
@@ -25,7 +26,7 @@ from tests.checks.made_subjects import (
 )
 
 CONDITIONS = (REST, RAMP, BREATHING, BREATHING_RAMP, SINUS_ARRHYTHMIA, RELEASED, REFLEX, FIBRILLATING, FIBRILLATING_RAMP)
-RECORDERS = ((ORDINARY, 250.0), (ORDINARY, 1000.0), (QUANTISED, 250.0), (QUANTISED, 1000.0))
+RECORDERS = ((ORDINARY, 250.0), (ORDINARY, 1000.0), (QUANTISED, 250.0), (QUANTISED, 1000.0), (COARSE, 250.0))
 LOST_SHARE = 0.005
 NAMES = [heart.name for heart in HEARTS]
 

@@ -4,7 +4,7 @@ import numpy as np
 import pytest
 
 from checks import ALL
-from checks.check import Check, Level, Limits, Measured, Verdict, single
+from checks.check import Check, Level, Limits, Measured, Verdict, judge, single
 from checks.spoils import EVERYTHING
 from checks.subject import AcquisitionSubject, RunSubject
 from checks.verdicts import Rules, judge_acquisition, judge_run, sentence, spoilers
@@ -190,6 +190,18 @@ def test_what_stopped_a_run_stands_in_the_reasons_of_what_could_not_be_evaluated
     rows = {row.check.name: row.reason for row in judge_run(bare, ALL, Rules({})).findings}
     assert rows["beats-found"] == "Beats were found: not evaluated (ValueError: x.csv: is empty)"
     assert "x.csv: is empty" in rows["readable"]
+
+
+@pytest.mark.parametrize("check", [check for check in ALL if check.level is not Level.ACQUISITION], ids=lambda check: check.name)
+def test_no_check_passes_a_run_that_was_not_read(check):
+    bare = RunSubject(replace(drawn().facts, kind=check.run_kinds[0]), None, trouble="x.csv: is empty")
+    assert judge(check, bare, check.limits, 3).worst() is not P
+
+
+@pytest.mark.parametrize("name", ["pressure-zero", "zero-drift", "pressure-gain", "pressure-sensor", "reference-volumes"])
+def test_no_check_passes_an_acquisition_that_declares_nothing(name):
+    (judged_one,), _ = judge_acquisition(AcquisitionSubject(AcquisitionFacts()), [CHECKS[name]], Rules({}))
+    assert judged_one.worst() is not P
 
 
 def test_an_acquisition_s_findings_have_neither_run_nor_beat_nor_instant():

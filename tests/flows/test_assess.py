@@ -3,13 +3,14 @@
 from collections import Counter
 from dataclasses import replace
 
+import numpy as np
 import pandas as pd
 import pytest
 
 from checks.tables import ALL as TABLES
 from flows.assess import assess
 from flows.errors import InputError
-from flows.sources.simulated.acquisition import PRESSURE, VOLUME, rest_and_ramp
+from flows.sources.simulated.acquisition import PRESSURE, TIME, VOLUME, rest_and_ramp
 from flows.sources.simulated.faults import with_columns
 from flows.sources.simulated.recorded import ORDINARY
 from flows.sources.simulated.rhythm import Conditions
@@ -380,3 +381,40 @@ def test_every_evaluated_value_is_kept_passes_too(found):
     assert len(keys) == len(set(keys))
     told = {(row["run"], row["beat"], row["check"]) for row in found.rejections if row["beat"] is not None}
     assert told <= set(keys)
+
+
+def rolled(count):
+    return np.random.default_rng(5).standard_normal(count)
+
+
+MUTILATIONS = {
+    "noise": lambda c: {PRESSURE: 50.0 + 30.0 * rolled(c[PRESSURE].size), VOLUME: 100.0 + 20.0 * rolled(c[VOLUME].size)[::-1]},
+    "constant": lambda c: {PRESSURE: np.full(c[PRESSURE].size, 7.0), VOLUME: np.zeros(c[VOLUME].size)},
+    "upside down": lambda c: {PRESSURE: -c[PRESSURE]},
+    "swapped": lambda c: {PRESSURE: c[VOLUME], VOLUME: c[PRESSURE]},
+    "backwards": lambda c: {name: c[name][::-1] for name in (PRESSURE, VOLUME)},
+    "huge": lambda c: {PRESSURE: 1e12 * c[PRESSURE], VOLUME: -1e9 * c[VOLUME]},
+    "one value": lambda c: {VOLUME: np.where(np.arange(c[VOLUME].size) == 40, c[VOLUME], np.nan)},
+    "two thirds lost": lambda c: {name: np.where(np.arange(c[name].size) % 3 == 0, c[name], np.nan) for name in (PRESSURE, VOLUME)},
+    "a jump of an hour": lambda c: {TIME: np.where(c[TIME] > 4.0, c[TIME] + 3600.0, c[TIME])},
+    "time stands still": lambda c: {TIME: np.zeros(c[TIME].size)},
+    "one sample": lambda c: {name: values[:1] for name, values in c.items()},
+    "a third of a beat": lambda c: {name: values[:80] for name, values in c.items()},
+}
+
+
+@pytest.mark.parametrize("how", MUTILATIONS)
+def test_whatever_a_run_holds_the_assessment_stands_and_no_number_in_it_is_wild(tmp_path, sound, found, how):
+    columns = sound.columns["rest"]
+    broken = assessed(tmp_path / "package", with_columns(sound, "rest", MUTILATIONS[how](dict(columns))))
+    strict_json(broken.evidence)
+    rows = [broken.acquisition, *broken.runs, *broken.beats, *broken.rejections, *broken.indices, *broken.measures]
+    numbers = [value for row in rows for value in row.values() if isinstance(value, float)]
+    assert np.isfinite(numbers).all()
+    verdicts = Counter(row["verdict"] for row in broken.beats)
+    assert broken.acquisition["beats"] == verdicts["accepted"] + verdicts["rejected"]
+    assert not any("Warning" in row["reason"] for row in broken.rejections)
+    mine = [row for row in broken.beats if row["run"] == "rest"]
+    assert sum(row["verdict"] == "accepted" for row in mine) <= len(mine) // 2
+    slope = indices(broken)["Ees"]
+    assert slope["status"] == "withheld" or slope["value"] == pytest.approx(indices(found)["Ees"]["value"])
