@@ -18,7 +18,7 @@ from flows.evidence import evidence_of
 from flows.facts import acquisition_facts, run_facts
 from flows.sources.read import read_run
 from flows.stage_indices import index_rows, stage_v0_ml, stages_of
-from flows.study.manifest import Manifest, ManifestRun
+from flows.study.manifest import MANIFEST_NAME, Manifest, ManifestRun
 from flows.study.protocol import Protocol
 from metrics.signals.calibrate import calibrated
 from metrics.signals.landmarks import beats_of
@@ -51,12 +51,8 @@ def assess(files: Mapping[str, Path], manifest: Manifest, protocol: Protocol) ->
     rules = rules_of(protocol)
     subjects = [prepared_run(files, manifest, run) for run in manifest.runs]
     if all(subject.recording is None for subject in subjects):
-        raise InputError(
-            "; ".join(str(subject.trouble) for subject in subjects),
-            file="acquisition.json",
-            field="runs",
-            remedy="Correct the files and send the package again.",
-        )
+        problem = "no run can be read: " + "; ".join(str(subject.trouble).rstrip(".") for subject in subjects)
+        raise InputError(problem, file=MANIFEST_NAME, field="runs", remedy="Correct the files and send the package again.")
     runs = [judge_run(subject, CHECKS, rules) for subject in subjects]
     facts = acquisition_facts(manifest, protocol)
     whole = AcquisitionSubject(facts, tuple(run.subject for run in runs))

@@ -18,7 +18,7 @@ from flows.intake import checksums
 from flows.intake.plain_files import explained, not_a_file, open_inside, shown
 from flows.study.json_text import parse_object
 from flows.study.manifest import MANIFEST_NAME
-from flows.study.names import did_you_mean, is_name, path_fault
+from flows.study.names import NAME_RULE, did_you_mean, is_name, path_fault
 
 _MOST_ENTRIES = 10_000
 _LONGEST_TEXT = 17 * 1024 * 1024
@@ -35,8 +35,8 @@ class Arrival:
     ``files`` maps payload paths (a bag's ``data/`` taken off) to SHA-256, ``file_paths`` to where they lie; both are filled where the
     content was verified, like ``package_sha256``, ``received_at`` and, as far as acquisition.json can be read, ``acquisition_name`` and
     ``declared_site``. That is every complete package, and a broken one only if its folder is the trouble (a site nobody knows).
-    ``newest_mtime`` is the last change seen in a waiting package. ``site`` is empty for what lies in the inbox itself and ``package`` for
-    a site folder as a whole.
+    ``unnamed`` says why a complete package has no ``acquisition_name``. ``newest_mtime`` is the last change seen in a waiting package.
+    ``site`` is empty for what lies in the inbox itself and ``package`` for a site folder as a whole.
     """
 
     site: str
@@ -51,6 +51,7 @@ class Arrival:
     acquisition_name: str | None = None
     declared_site: str | None = None
     newest_mtime: datetime | None = None
+    unnamed: str = ""
 
 
 def scan(inbox: Path, sites: Collection[str]) -> list[Arrival]:
@@ -167,7 +168,7 @@ def _verified(path: Path, site: str, package: str, entries: Mapping[str, os.stat
         problem = "is not in the package"
         remedy = "Add it and list it." if prefix or not any(name.endswith(f"/{MANIFEST_NAME}") for name in files) else _WRONG_PLACE
         raise InputError(problem, file=MANIFEST_NAME, remedy=remedy)
-    acquisition_name, declared_site = _declared(_read(path, f"{prefix}{MANIFEST_NAME}"))
+    acquisition_name, declared_site, unnamed = _declared(_read(path, f"{prefix}{MANIFEST_NAME}"))
     return Arrival(
         site,
         package,
@@ -179,6 +180,7 @@ def _verified(path: Path, site: str, package: str, entries: Mapping[str, os.stat
         file_paths={name: path / f"{prefix}{name}" for name in files},
         acquisition_name=acquisition_name,
         declared_site=declared_site,
+        unnamed=unnamed,
     )
 
 
@@ -246,16 +248,20 @@ def _read(package: Path, name: str) -> bytes:
         raise explained(failure, name) from None
 
 
-def _declared(content: bytes) -> tuple[str | None, str | None]:
-    """Return acquisition and site as declared, where the file can be read that far; what else is wrong is for the manifest's reader."""
+def _declared(content: bytes) -> tuple[str | None, str | None, str]:
+    """Return acquisition and site as declared, and what keeps the acquisition's name from being read; the rest is for its own reader."""
     try:
         data = parse_object(content, file=MANIFEST_NAME)
-    except InputError:
-        return None, None
+    except InputError as refusal:
+        return None, None, str(refusal)
     acquisition, site = (
         value if isinstance(value, str) and is_name(value) else None for value in (data.get("acquisition"), data.get("site"))
     )
-    return acquisition, site
+    if acquisition is not None:
+        return acquisition, site, ""
+    problem = "is missing" if data.get("acquisition") is None else "is not a name that can be used"
+    refusal = InputError(problem, file=MANIFEST_NAME, field="acquisition", value=data.get("acquisition"), remedy=f"Use {NAME_RULE}.")
+    return None, site, str(refusal)
 
 
 def _instant(nanoseconds: int, name: str) -> datetime:

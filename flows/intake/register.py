@@ -101,7 +101,7 @@ def _objection(arrival: Arrival, digest: str, refused: Mapping[str, str]) -> str
         return f"acquisition.json: site: does not match the inbox folder {arrival.site!r} (found {arrival.declared_site!r})."
     if digest in refused:
         return refused[digest]
-    return "" if arrival.acquisition_name is not None else "acquisition.json: acquisition: cannot be read."
+    return "" if arrival.acquisition_name is not None else arrival.unnamed or "acquisition.json: acquisition: is missing."
 
 
 def _split_repeats(contents: list[_Content]) -> tuple[list[_Content], list[Entry]]:
