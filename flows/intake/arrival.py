@@ -260,8 +260,8 @@ def _declared(content: bytes) -> tuple[str | None, str | None, str]:
     if acquisition is not None:
         return acquisition, site, ""
     problem = "is missing" if data.get("acquisition") is None else "is not a name that can be used"
-    refusal = InputError(problem, file=MANIFEST_NAME, field="acquisition", value=data.get("acquisition"), remedy=f"Use {NAME_RULE}.")
-    return None, site, str(refusal)
+    unnamed = InputError(problem, file=MANIFEST_NAME, field="acquisition", value=data.get("acquisition"), remedy=f"Use {NAME_RULE}.")
+    return None, site, str(unnamed)
 
 
 def _instant(nanoseconds: int, name: str) -> datetime:
