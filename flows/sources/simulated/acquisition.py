@@ -55,7 +55,8 @@ class Recipe:
     """Everything an acquisition follows from; the same recipe makes the same acquisition.
 
     ``raw_volume`` writes the volume before its calibration and declares gain and parallel volume; ``reference`` names the method
-    that measured volumes beside it, None where there was none; ``with_time`` writes a column of time stamps.
+    that measured volumes beside it, None where there was none; ``with_time`` writes a column of time stamps. ``points_mmhg`` are the
+    pressures applied to calibrate the sensor.
     """
 
     identity: Identity
@@ -69,6 +70,7 @@ class Recipe:
     with_time: bool = True
     reference: str | None = "CMR"
     bsa_m2: float | None = 1.9
+    points_mmhg: tuple[int, ...] = (0, 100)
 
 
 @dataclass(frozen=True, slots=True)
@@ -168,7 +170,10 @@ def _pressure_calibration(recipe: Recipe) -> Facts:
         "zero_before": {"at": _at(recipe, 0.0), "mmhg": round(catheter.zero_shown_mmhg(0.0), 2)},
         "zero_after": {"at": _at(recipe, ZERO_AFTER_HOUR), "mmhg": round(catheter.zero_shown_mmhg(ZERO_AFTER_HOUR), 2)},
         "zero_sd_mmhg": 0.3,
-        "points": [{"applied_mmhg": applied, "read_mmhg": round(line.pressure_shown_mmhg(float(applied), 0.0), 2)} for applied in (0, 100)],
+        "points": [
+            {"applied_mmhg": applied, "read_mmhg": round(line.pressure_shown_mmhg(float(applied), 0.0), 2)}
+            for applied in recipe.points_mmhg
+        ],
     }
 
 
@@ -201,6 +206,7 @@ def _run_facts(recipe: Recipe, plan: RunPlan, run: RecordedRun) -> Facts:
     }
     if run.kind == "preload-reduction":
         facts["manoeuvre"] = "caval-balloon"
+    if run.events:
         facts["events"] = [{"at_s": at_s, "kind": kind} for at_s, kind in run.events]
     return facts
 

@@ -9,7 +9,7 @@ import numpy as np
 from flows.sources.simulated.activation import FloatArray
 from flows.sources.simulated.circulation import Solution
 from flows.sources.simulated.electrocardiogram import ecg_mv
-from flows.sources.simulated.rhythm import seconds
+from flows.sources.simulated.rhythm import STEP_S, Injection, seconds
 
 
 @dataclass(frozen=True, slots=True)
@@ -65,7 +65,10 @@ def record(solution: Solution, catheter: Catheter, rate_hz: float, rng: np.rando
     pressure = np.interp(time_s - catheter.pressure_delay_s, grid_s, solution.pressure_mmhg)
     pressure = catheter.pressure_gain * (pressure + zero) + catheter.pressure_shift_mmhg
     volume = np.interp(time_s - catheter.volume_delay_s, grid_s, solution.volume_ml)
-    volume = catheter.volume_gain * volume + catheter.volume_shift_ml
+    injection = solution.conditions.injection
+    conducted = 1.0 if injection is None else 1.0 + np.interp(time_s - catheter.volume_delay_s, grid_s, washed(solution, injection))
+    # What the wall and the tissue behind it conduct does not change with the blood: the shift stays as it is.
+    volume = catheter.volume_gain * volume * conducted + catheter.volume_shift_ml
     beats = solution.schedule
     r_s = seconds(beats.onset - solution.first) - solution.heart.electromechanical_delay_s
     lead = ecg_mv(time_s, r_s, beats.rr_before_s, beats.premature, atrial=not solution.conditions.fibrillating, aberrant=beats.aberrant)
@@ -76,6 +79,17 @@ def record(solution: Solution, catheter: Catheter, rate_hz: float, rng: np.rando
         ecg_mv=lead + catheter.ecg_noise_mv * rng.standard_normal(count),
         aortic_pressure_mmhg=np.interp(time_s, grid_s, solution.aortic_pressure_mmhg),
     )
+
+
+def washed(solution: Solution, injection: Injection) -> FloatArray:
+    """Return by what fraction the blood in the ventricle conducts better on the solution's grid: it changes with what comes in alone."""
+    incoming = injection.excess(solution.time_s)
+    share = STEP_S * np.clip(solution.inflow_ml_per_s, 0.0, None) / solution.volume_ml
+    within, excess = 0.0, []
+    for came, part in zip(incoming.tolist(), share.tolist(), strict=True):
+        within += part * (came - within)
+        excess.append(within)
+    return np.asarray(excess, dtype=np.float64)
 
 
 def _stepped(values: FloatArray, step: float) -> FloatArray:

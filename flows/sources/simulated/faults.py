@@ -30,10 +30,16 @@ class Expected:
 
 @dataclass(frozen=True, slots=True)
 class Injected:
-    """An acquisition with a fault in it, and what should be found."""
+    """An acquisition with a fault in it, and what should be found.
+
+    ``other`` is the acquisition whose signals were sent, where they are not this one's; ``pressure_late_s`` how late the pressure is
+    beyond what is declared.
+    """
 
     acquisition: Acquisition
     expected: tuple[Expected, ...]
+    other: Acquisition | None = None
+    pressure_late_s: float = 0.0
 
 
 Fault = Callable[[Acquisition, float], Injected]

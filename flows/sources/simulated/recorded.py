@@ -56,6 +56,13 @@ def recorded(
     }
 
 
+def kind_of(conditions: Conditions) -> str:
+    """Return the kind of a run under these conditions, in the word of the contract."""
+    if conditions.injection is not None:
+        return "saline"
+    return "steady" if conditions.occlusion is None else "preload-reduction"
+
+
 @functools.lru_cache(maxsize=24)
 def _solved(heart: Heart, conditions: Conditions, seed: int) -> tuple[Solution, RunTruth]:
     """Return a run solved once, for every catheter, rate and fault of the sensors that looks at it; nobody may write into it."""
@@ -76,9 +83,11 @@ def recorded_run(
         events = ((occlusion.onset_s, "occlusion-on"),)
         if occlusion.deflation_s is not None:
             events += ((occlusion.deflation_s, "occlusion-off"),)
+    if conditions.injection is not None:
+        events += ((conditions.injection.onset_s, "injection"),)
     return RecordedRun(
         run=run,
-        kind="steady" if occlusion is None else "preload-reduction",
+        kind=kind_of(conditions),
         chamber=heart.chamber,
         sampling_rate_hz=rate_hz,
         signals=record(solution, catheter, rate_hz, np.random.default_rng([seed, 1]), hour),

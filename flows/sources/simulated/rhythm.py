@@ -44,6 +44,20 @@ class Breathing:
 
 
 @dataclass(frozen=True, slots=True)
+class Injection:
+    """Hypertonic saline washing in: the blood that comes in conducts better by up to ``peak`` (a fraction), ``rise_s`` after the onset."""
+
+    onset_s: float = 3.0
+    peak: float = 0.16
+    rise_s: float = 3.5
+
+    def excess(self, time_s: FloatArray) -> FloatArray:
+        """Return by what fraction the blood that comes in conducts better, same shape as ``time_s``."""
+        since = np.clip(time_s - self.onset_s, 0.0, None) / self.rise_s
+        return np.asarray(self.peak * since * np.exp(1.0 - since), dtype=np.float64)
+
+
+@dataclass(frozen=True, slots=True)
 class Conditions:
     """What happens during one run.
 
@@ -51,6 +65,7 @@ class Conditions:
     ``coupling`` of the heart's own cycle length; ``fibrillating`` replaces the sinus rhythm by an irregular one without an atrial kick,
     its cycles spread by ``irregularity``. The first beat after each of ``aberrant_s`` is on time but conducted another way: a wide
     complex, and a force of ``aberrant_force``. ``filling_trend_per_s`` lets the filling pressure rise or fall by that fraction a second.
+    An ``injection`` changes what a conductance catheter sees, not the heart.
     """
 
     duration_s: float = 30.0
@@ -64,6 +79,7 @@ class Conditions:
     aberrant_s: tuple[float, ...] = ()
     aberrant_force: float = 0.75
     filling_trend_per_s: float = 0.0
+    injection: Injection | None = None
 
 
 @dataclass(frozen=True, slots=True)

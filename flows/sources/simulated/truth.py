@@ -55,7 +55,12 @@ class BeatTruth:
     @property
     def sound(self) -> NDArray[np.bool_]:
         """Return which beats are neither premature nor conducted another way, shape (n_beats,)."""
-        return ~(np.asarray(self.premature) | np.asarray(self.aberrant))
+        return ~np.logical_or(self.premature, self.aberrant)
+
+    @property
+    def sound_ramp(self) -> NDArray[np.bool_]:
+        """Return which sound beats belong to the ramp, shape (n_beats,)."""
+        return np.asarray(self.sound & np.asarray(self.in_ramp), dtype=np.bool_)
 
     @property
     def ea_mmhg_per_ml(self) -> FloatArray:
@@ -102,7 +107,7 @@ def run_truth(solution: Solution) -> RunTruth:
     """
     beats = beat_truth(solution)
     sound = beats.sound
-    ramp = np.asarray(beats.in_ramp) & sound
+    ramp = beats.sound_ramp
     slope, volume_axis = stroke_work_line(beats, ramp)
     heart = solution.heart
     ees, v0 = heart.ees_mmhg_per_ml, heart.v0_ml
