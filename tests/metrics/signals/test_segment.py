@@ -119,3 +119,16 @@ def test_irregular_and_breathing_hearts(conditions):
     _, beats = signals_and_beats(recorded)
     own, late_s = nearest_true(recorded, beats, 250.0)
     assert sorted(own[np.abs(late_s) < 0.03].tolist()) == list(range(len(recorded.truth.beats)))
+
+
+@pytest.mark.parametrize("heart", ["normal", "failing", "right"])
+@pytest.mark.parametrize("run", ["rest", "ramp"])
+def test_noise_makes_no_beats(heart, run):
+    for seed in range(3):
+        recorded = heart_runs(heart, catheter="twice-noisy", seed=seed)[run]
+        _, beats = signals_and_beats(recorded)
+        own, late_s = nearest_true(recorded, beats, 250.0)
+        true = recorded.truth.beats
+        inside = (beats.start / 250.0 > true.start_s[0] - 0.1) & (beats.start / 250.0 < true.start_s[-1] + 0.1)
+        assert set(own[np.abs(late_s) < 0.05].tolist()) == set(range(len(true)))
+        assert (np.abs(late_s[inside]) > 0.05).sum() == 0
