@@ -13,7 +13,7 @@ from pathlib import Path
 
 from flows.prefect_settings import settle
 from flows.steps.assessing import assess_chunk, chunks
-from flows.steps.opening import Options, open_night
+from flows.steps.opening import Options, already_running, is_held, open_night
 from flows.steps.publishing import NightResult, publish_night
 from flows.steps.receiving import pending, receive
 from flows.study.protocol import read_protocol
@@ -30,6 +30,8 @@ def run_night(study: Path, options: Options | None = None) -> NightResult:
     options = options or Options()
     study = study.absolute()
     read_protocol(study)
+    if is_held(study / "store"):
+        raise already_running(study / "store")  # said at once: the orchestration takes its time to start
     settle(study / "store")
     from flows.nightly_flow import EngineFailed, run_flow  # noqa: PLC0415  (3 s, and the settings must come first)
 

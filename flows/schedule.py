@@ -6,14 +6,13 @@ The night begins at 04:15 of the study's time zone. No zone of the time-zone dat
 
 from __future__ import annotations
 
-import fcntl
 import os
 import sys
 from typing import TYPE_CHECKING, Any
 
 from flows.flow_server import flow_server
 from flows.prefect_settings import settle
-from flows.steps.opening import LOCK_NAME
+from flows.steps.opening import is_held
 from flows.study.protocol import read_protocol
 
 if TYPE_CHECKING:
@@ -110,15 +109,3 @@ def watch_for_silence() -> None:
         action = ChangeFlowRunState(state=StateType.CRASHED, message="No sign of life: the process is lost.")
         create: Any = Automation(name=name, trigger=trigger, actions=[action]).create
         create()  # outside an event loop both do their work at once, whatever their types say
-
-
-def is_held(store: Path) -> bool:
-    """Say whether a night holds the study at this moment."""
-    try:
-        with (store / LOCK_NAME).open("rb") as handle:
-            fcntl.flock(handle, fcntl.LOCK_SH | fcntl.LOCK_NB)
-    except FileNotFoundError:
-        return False
-    except BlockingIOError:
-        return True
-    return False

@@ -5,10 +5,12 @@ from __future__ import annotations
 import fcntl
 import os
 from collections.abc import Callable, Iterator
-from contextlib import ExitStack, contextmanager
+from contextlib import ExitStack, contextmanager, suppress
 from dataclasses import dataclass, field
 from datetime import UTC, datetime
 from typing import TYPE_CHECKING
+
+from sqlalchemy.exc import SQLAlchemyError
 
 from flows.catalogue import store
 from flows.catalogue.basis import Basis, revisions_sha256
@@ -104,6 +106,24 @@ def open_night(study: Path, options: Options) -> Iterator[Night]:
             yield night
 
 
+def is_held(folder: Path) -> bool:
+    """Say whether a night holds the study whose store is ``folder`` at this moment."""
+    try:
+        with (folder / LOCK_NAME).open("rb") as handle:
+            fcntl.flock(handle, fcntl.LOCK_SH | fcntl.LOCK_NB)
+    except FileNotFoundError:
+        return False
+    except BlockingIOError:
+        return True
+    return False
+
+
+def already_running(folder: Path) -> AlreadyRunning:
+    """Return the refusal of a second night on the store ``folder``."""
+    problem = "a night is already running"
+    return AlreadyRunning(problem, file=str(folder / LOCK_NAME), remedy="Wait until it has ended.")
+
+
 @contextmanager
 def _held(folder: Path) -> Iterator[None]:
     """Hold the kernel's lock on the store: it ends with this process, however that ends."""
@@ -112,8 +132,7 @@ def _held(folder: Path) -> Iterator[None]:
         try:
             fcntl.flock(handle, fcntl.LOCK_EX | fcntl.LOCK_NB)
         except BlockingIOError:
-            problem = "a night is already running"
-            raise AlreadyRunning(problem, file=str(folder / LOCK_NAME), remedy="Wait until it has ended.") from None
+            raise already_running(folder) from None
         yield
 
 
@@ -128,5 +147,6 @@ def _recorded(night: Night) -> Iterator[None]:
 
 
 def _end(night: Night, status: str, trouble: str) -> None:
-    with writing(night.engine) as session:
+    # Where even this cannot be written, the record stays open, and the next night closes it as crashed.
+    with suppress(SQLAlchemyError), writing(night.engine) as session:
         store.end_night(session, night.number, status, at=datetime.now(UTC), trouble=trouble)

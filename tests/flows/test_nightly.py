@@ -1,11 +1,13 @@
 """The night without the orchestration: what it publishes, what a second one changes, and what one bad package costs."""
 
 import csv
+import errno
 import fcntl
 import hashlib
 import io
 import json
 import os
+import shutil
 import subprocess
 import sys
 from datetime import datetime
@@ -247,8 +249,9 @@ def test_a_second_night_at_once_is_told_so_and_touches_nothing(study):
     (study / "store").mkdir()
     with (study / "store" / "night.lock").open("ab") as held:
         fcntl.flock(held, fcntl.LOCK_EX)
-        with pytest.raises(AlreadyRunning, match="a night is already running"):
-            run_night_plain(study, OPTIONS)
+        for door in (run_night_plain, nightly.run_night):
+            with pytest.raises(AlreadyRunning, match="a night is already running"):
+                door(study, OPTIONS)
     assert {path.name for path in (study / "store").iterdir()} == {"night.lock"}
     run_night_plain(study, OPTIONS)
     assert statuses(study) == {"H-1-baseline": "accepted"}
@@ -387,6 +390,38 @@ def test_killed_anywhere_the_next_night_ends_the_same(tmp_path):
     assert len(answer["found"]) >= 7
     for found in answer["found"]:
         assert all(found.values()), found
+
+
+def fail_at(monkeypatch, point):
+    """Let the disk refuse one flush, the one numbered ``point``; return the count of flushes so far."""
+    real, flushed = os.fsync, []
+
+    def flush(descriptor):
+        flushed.append(descriptor)
+        if len(flushed) == point:
+            raise OSError(errno.EIO, "made to fail")
+        real(descriptor)
+
+    monkeypatch.setattr(os, "fsync", flush)
+    return flushed
+
+
+def test_a_failing_disk_is_never_a_green_night_and_the_next_one_ends_the_same(study, tmp_path, monkeypatch):
+    send(study, "H-1-baseline")
+    reference = make_study(tmp_path / "reference")
+    send(reference, "H-1-baseline")
+    with monkeypatch.context() as patch:
+        flushed = fail_at(patch, 0)
+        run_night_plain(reference, OPTIONS)
+    for point in range(3, len(flushed), len(flushed) // 5):
+        copy = shutil.copytree(study, tmp_path / f"point-{point}")
+        with monkeypatch.context() as patch:
+            fail_at(patch, point)
+            with pytest.raises(OSError, match="made to fail"):
+                run_night_plain(copy, OPTIONS)
+        assert ends_of_nights(copy)[-1:] in ([], ["failed"])
+        run_night_plain(copy, OPTIONS)
+        assert published(copy) == published(reference)
 
 
 def test_where_the_orchestration_does_not_start_the_night_runs_without_it(study, monkeypatch):

@@ -14,8 +14,8 @@ from flows import prefect_settings
 from flows.errors import InputError
 from flows.flow_server import live_server
 from flows.nightly import run_night
-from flows.schedule import CRON, is_held, serve
-from flows.steps.opening import LOCK_NAME
+from flows.schedule import CRON, serve
+from flows.steps.opening import LOCK_NAME, is_held
 
 YEARS = range(2024, 2039)
 
