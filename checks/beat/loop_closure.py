@@ -26,8 +26,8 @@ IRREGULAR_CV = 0.10
 def closure_gap(subject: RunSubject) -> Measured:
     """Return the gap of each loop beyond the run's trend as a fraction of its SV where it stands out of the spread, else 0.
 
-    Shape (n_beats,). NaN in a run whose RR varies by more than 10 % (robust CV), beside a premature beat, after the
-    usable window of a preload-reduction run, and where SV is not positive.
+    Shape (n_beats,). NaN in declared atrial fibrillation, in a run whose RR varies by more than 10 % (robust CV), beside a premature
+    beat, after the usable window of a preload-reduction run, and where SV is not positive.
     """
     beats, signals = subject.known_beats(), subject.known_signals()
     if len(beats) == 0:
@@ -42,7 +42,8 @@ def closure_gap(subject: RunSubject) -> Measured:
     usual_sv_ml = np.maximum(beats.sv_ml, float(np.median(beats.sv_ml)))
     share = np.where(usual_sv_ml > 0.0, np.where(beyond_ml > SPREAD_SD * spread_ml, beyond_ml, 0.0), np.nan)
     share /= np.where(usual_sv_ml > 0.0, usual_sv_ml, 1.0)
-    if robust_sd(beats.rr_s) / float(np.median(beats.rr_s)) > IRREGULAR_CV:
+    is_irregular = robust_sd(beats.rr_s) / float(np.median(beats.rr_s)) > IRREGULAR_CV
+    if is_irregular or subject.facts.rhythm == "atrial-fibrillation":
         share[:] = np.nan
     premature = (preceding_ratio(beats.rr_s) < (PREMATURE.limits.fail_below or 0.0)) & has_second_sign(subject)
     if subject.window is not None:

@@ -115,6 +115,13 @@ def test_in_an_irregular_heart_closure_is_not_evaluated_and_rejects_nothing():
     assert [(finding.beat, finding.decisive) for finding in told] == [(None, False)]
 
 
+def test_declared_fibrillation_is_irregular_even_where_a_few_beats_happen_to_be_even():
+    gap = np.zeros(12)
+    gap[6] = 21.0
+    even = gaps(*gap, facts=RunFacts("drawn", "steady", rhythm="atrial-fibrillation", sampling_rate_hz=200.0))
+    assert set(closure(even).verdict) == {N}
+
+
 def test_after_the_window_of_an_occlusion_closure_is_not_evaluated():
     subject = simulated("normal", RELEASED)
     after = np.arange(len(subject.beats)) > subject.window.last_at
