@@ -6,12 +6,13 @@ child started afresh would also run the parent's main module again, and with it 
 
 from __future__ import annotations
 
+import hashlib
 import os
 import sys
 import threading
 from concurrent.futures import Future
 from concurrent.futures.process import BrokenProcessPool
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from multiprocessing.context import SpawnContext, SpawnProcess
 from types import ModuleType
 from typing import TYPE_CHECKING, Any, Self
@@ -37,23 +38,44 @@ _ONE_THREAD = ("OMP_NUM_THREADS", "OPENBLAS_NUM_THREADS", "MKL_NUM_THREADS")
 
 @dataclass(frozen=True)
 class Job:
-    """One package to assess: its site, its folder's name, the sum of its content, and where the bytes of each payload file lie."""
+    """One package to assess: its site, its folder's name, the sum of its content, and where the bytes of each payload file lie.
+
+    ``digests`` says what these bytes must be; ``damage`` is what stands in the way of reading them at all.
+    """
 
     site: str
     package: str
     package_sha256: str
     files: Mapping[str, Path]
     protocol: Protocol
+    digests: Mapping[str, str] = field(default_factory=dict)
+    damage: str = ""
 
 
 def assess_job(job: Job) -> Outcome:
     """Return what is found in the job's package; what the input or the program does wrong is part of the answer."""
+    damage = job.damage or _damage(job)
+    if damage:
+        return Refused(Trouble.PROGRAM, f"the program could not assess this package: {damage}")
     try:
         return _assessed(job)
     except InputError as refusal:
         return Refused(Trouble.INPUT, str(refusal))
     except Exception as failure:  # noqa: BLE001  (one package must not stop the others)
         return Refused(Trouble.PROGRAM, f"the program could not assess this package: {type(failure).__name__}: {_placeless(failure, job)}")
+
+
+def _damage(job: Job) -> str:
+    """Return which kept files are no longer what was received, in words; what they would give must not be published."""
+    changed = []
+    for name, digest in sorted(job.digests.items()):
+        try:
+            with job.files[name].open("rb") as handle:
+                if hashlib.file_digest(handle, "sha256").hexdigest() != digest:
+                    changed.append(name)
+        except OSError:
+            changed.append(name)
+    return f"the kept copy of {', '.join(changed)} is damaged" if changed else ""
 
 
 def _placeless(failure: Exception, job: Job) -> str:

@@ -16,6 +16,7 @@ from flows.workers import Job
 if TYPE_CHECKING:
     from collections.abc import Mapping
 
+    from flows.intake.register import Entry
     from flows.steps.opening import Night
 
 _RETRIED = {Trouble.PROGRAM, Trouble.TIME_OUT, Trouble.DIED}
@@ -44,9 +45,17 @@ def pending(night: Night, arrivals: list[Arrival]) -> list[Job]:
             continue
         key = (entry.site, entry.package_sha256)
         if key not in night.tried and _is_wanted(night, outcomes.get(key)):
-            files = night.originals.files(entry.package_sha256)
-            jobs[key] = Job(entry.site, entry.package, entry.package_sha256, files, night.protocol)
+            jobs[key] = _job(night, entry, entry.package_sha256)
     return [jobs[key] for key in sorted(jobs)]
+
+
+def _job(night: Night, entry: Entry, content: str) -> Job:
+    """Return the job; an original that is lost costs its own package, so that is left for the job to say."""
+    try:
+        files, digests = night.originals.files(content), night.originals.digests(content)
+    except InputError as loss:
+        return Job(entry.site, entry.package, content, {}, night.protocol, damage=loss.problem)
+    return Job(entry.site, entry.package, content, files, night.protocol, digests)
 
 
 def _is_wanted(night: Night, outcome: Mapping[str, Any] | None) -> bool:

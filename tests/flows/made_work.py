@@ -9,11 +9,15 @@ from datetime import UTC, datetime
 from flows.catalogue.evidence_files import packed
 from flows.catalogue.outcome import Found, Refused, Trouble
 from flows.errors import InputError
+from flows.workers import _damage, assess_job
 from tests.flows.made_rows import found_rows
 
 
 def work(job):
     """Answer by the first word of the package's note.txt: hang, die, leave, raise, refuse, queried, modules; else found."""
+    damaged = assess_job(job) if job.damage or _damage(job) else None
+    if damaged is not None:
+        return damaged
     note = job.files["note.txt"].read_text(encoding="utf-8").split() if "note.txt" in job.files else []
     match note[:1]:
         case ["hang"]:

@@ -329,6 +329,28 @@ def test_lost_evidence_is_made_anew_and_altered_evidence_is_named(study):
     assert published(study) == before
 
 
+def test_an_original_that_rots_is_not_assessed_and_costs_its_own_package(study, monkeypatch):
+    gone = [send(study, name) for name in ("H-1-baseline", "H-2-baseline", "H-3-baseline")]
+    run_night_plain(study, OPTIONS)
+    listings = {path.stem for path in (study / "store" / "packages").iterdir()}
+    for folder in gone:
+        shutil.rmtree(folder)
+    contents = dict(zip(table(study, "packages")["package"], table(study, "packages")["package_sha256"], strict=True))
+    assert listings == set(contents.values())
+    (study / "store" / "packages" / f"{contents['H-1-baseline']}.json").unlink()
+    digest = json.loads((study / "store" / "packages" / f"{contents['H-2-baseline']}.json").read_text())["files"]["acquisition.json"]
+    rotted = study / "store" / "objects" / digest[:2] / digest
+    rotted.chmod(0o644)
+    rotted.write_text(rotted.read_text().replace("H-2", "H-9"))
+    monkeypatch.setattr(opening, "software_version", lambda: "99.0")
+    result = run_night_plain(study, OPTIONS)
+    reasons = dict(zip(table(study, "packages")["package"], table(study, "packages")["reason"], strict=True))
+    assert statuses(study) == {"H-1-baseline": "quarantined", "H-2-baseline": "quarantined", "H-3-baseline": "accepted"}
+    assert reasons["H-1-baseline"] == "the program could not assess this package: no such package was kept"
+    assert reasons["H-2-baseline"] == "the program could not assess this package: the kept copy of acquisition.json is damaged"
+    assert len(result.problems) == 2
+
+
 def test_a_release_can_be_given_a_name_once(study):
     send(study, "H-1-baseline")
     named = Options(work=work, release="first-data-cut")
