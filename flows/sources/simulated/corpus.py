@@ -147,8 +147,9 @@ class Reach:
 class Faulty:
     """An acquisition with a fault in it.
 
-    ``truth`` is what is true of the patient, whatever the signals say; ``expected`` what a check should find, with the instants inside
-    the beats it touches (in true seconds); ``reached`` how far each index is moved; ``other`` the acquisition whose signals these are.
+    ``truth`` is what is true of the patient, whatever the signals say. ``expected`` is what a check should find once the severity
+    matters, with the instants inside the beats it touches (in true seconds); ``reached`` how far each index is moved; ``other`` the
+    acquisition whose signals these are, where they are another's.
     """
 
     acquisition: Acquisition
@@ -161,14 +162,18 @@ class Faulty:
 def faulty(acquisition: Acquisition, fault: Ladder, severity: float) -> Faulty:
     """Return a sound acquisition with a fault of that severity in it."""
     injected = fault.inject(acquisition, severity)
-    return Faulty(injected.acquisition, true_indices(acquisition), injected.expected, reached(acquisition, fault, severity), injected.other)
+    truth = true_indices(injected.acquisition if injected.truth_is_its_own else acquisition)
+    return Faulty(injected.acquisition, truth, injected.expected, reached(acquisition, fault, severity), injected.other)
 
 
 def reached(acquisition: Acquisition, fault: Ladder, severity: float) -> tuple[Reach, ...]:
-    """Return by how much a fault moves each index, from the same acquisition recorded without noise, with and without it."""
+    """Return by how much a fault moves each index, from the same acquisition recorded without noise, with and without it.
+
+    Precision is another matter: points of a run at rest lie on the end-systolic line as well, where there is no noise.
+    """
     quiet = _made(replace(acquisition.recipe, catheter=without_noise(acquisition.recipe.catheter)))
-    sound = _sound_reading(quiet.recipe)
     injected: Injected = fault.inject(quiet, severity)
+    sound = true_indices(injected.acquisition) if injected.truth_is_its_own else _sound_reading(quiet.recipe)
     faulty_reading = read_indices(injected.acquisition, injected.pressure_late_s)
     return tuple(Reach(*key, value, faulty_reading.get(key, float("nan"))) for key, value in sound.items())
 

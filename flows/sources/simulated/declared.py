@@ -6,6 +6,7 @@ computed without the program under test.
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import dataclass
 from datetime import datetime
 
@@ -41,7 +42,7 @@ def believed(acquisition: Acquisition, run: str) -> Believed:
     true_s = np.arange(count) / acquisition.recipe.rate_hz
     if "time" in channels and TIME in columns and count < round(true_duration_s(acquisition, run) * acquisition.recipe.rate_hz):
         true_s = columns[TIME]  # rows were lost; what is left kept its stamps
-    pressure = columns[channels["pressure"]["column"]] * PER_UNIT[channels["pressure"]["unit"]]
+    pressure = _samples(columns, channels["pressure"], clock_s)
     pressure = _pressure_mmhg(pressure, acquisition.manifest, facts, calibration.get("pressure", {}))
     return Believed(
         true_s=true_s,
@@ -104,7 +105,7 @@ def _volume(acquisition: Acquisition, facts: Facts, calibration: Facts, clock_s:
     else:
         segments = channels["segments"]
         used = [segments[number - 1] for number in calibration.get("segments_used", range(1, len(segments) + 1))]
-    raw = np.sum([columns[one["column"]] * PER_UNIT[one["unit"]] for one in used], axis=0)
+    raw = np.sum([_samples(columns, one, clock_s) for one in used], axis=0)
     is_conductance = used[0]["unit"] in {"mS", "S"}
     if is_conductance:
         sensor = acquisition.manifest["sensors"]["volume"]
@@ -113,6 +114,15 @@ def _volume(acquisition: Acquisition, facts: Facts, calibration: Facts, clock_s:
     if is_conductance or not used[0].get("calibrated", True):
         raw = (raw - calibration.get("alpha_vc_ml", 0.0)) / calibration.get("alpha", 1.0)
     return _earlier(raw, clock_s, used[0])
+
+
+def _samples(columns: Mapping[str, FloatArray], channel: Facts, clock_s: FloatArray) -> FloatArray:
+    """Return a column in base units, one of a lower rate filled in at the run's samples."""
+    values = columns[channel["column"]] * PER_UNIT[channel["unit"]]
+    if "sampling_rate_hz" not in channel:
+        return values
+    values = values[: int(np.flatnonzero(~np.isnan(values))[-1]) + 1]
+    return np.interp(clock_s, np.arange(values.size) / channel["sampling_rate_hz"], values)
 
 
 def _earlier(values: FloatArray, clock_s: FloatArray, channel: Facts) -> FloatArray:

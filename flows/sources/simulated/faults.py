@@ -33,13 +33,15 @@ class Injected:
     """An acquisition with a fault in it, and what should be found.
 
     ``other`` is the acquisition whose signals were sent, where they are not this one's; ``pressure_late_s`` how late the pressure is
-    beyond what is declared.
+    beyond what is declared. Where the heart itself was in another state than declared, and its indices are what was measured, its
+    ``truth_is_its_own``.
     """
 
     acquisition: Acquisition
     expected: tuple[Expected, ...]
     other: Acquisition | None = None
     pressure_late_s: float = 0.0
+    truth_is_its_own: bool = False
 
 
 Fault = Callable[[Acquisition, float], Injected]

@@ -16,7 +16,7 @@ import numpy as np
 import pyarrow as pa
 import pyarrow.csv as arrow_csv
 
-from flows.sources.simulated.acquisition import DECIMALS, Acquisition
+from flows.sources.simulated.acquisition import DECIMALS, TIME, VOLUME, Acquisition
 from flows.sources.simulated.activation import FloatArray
 
 MANIFEST = "manifest-sha256.txt"
@@ -32,9 +32,18 @@ def acquisition_files(acquisition: Acquisition) -> dict[str, bytes]:
 
 def csv_text(columns: Mapping[str, FloatArray]) -> str:
     """Return columns as CSV text with a header; a missing sample is an empty cell."""
-    cells = [_cells(values, DECIMALS[name]) for name, values in columns.items()]
+    cells = [_cells(values, decimals(name, values)) for name, values in columns.items()]
     rows = [",".join(row) for row in zip(*cells, strict=True)]
     return "\n".join([",".join(columns), *rows]) + "\n"
+
+
+def decimals(name: str, values: FloatArray) -> int:
+    """Return how many decimals a column is written with: more for a volume in litres, and for a clock that ran wrong."""
+    usual = DECIMALS.get(name, 3)
+    if name == VOLUME and np.nanmax(np.abs(values), initial=0.0) < 2.0:
+        return usual + 3
+    is_even = name != TIME or np.allclose(values, np.round(values, usual), rtol=0.0, atol=1e-8, equal_nan=True)
+    return usual if is_even else usual + 3
 
 
 def _cells(values: FloatArray, decimals: int) -> list[str]:
@@ -44,7 +53,7 @@ def _cells(values: FloatArray, decimals: int) -> list[str]:
 
 def csv_bytes(columns: Mapping[str, FloatArray]) -> bytes:
     """Return columns as CSV with a header, ten times as fast as `csv_text`: the same numbers, without zeros at their end."""
-    table = pa.table({name: pa.array(np.round(values, DECIMALS[name]), from_pandas=True) for name, values in columns.items()})
+    table = pa.table({name: pa.array(np.round(values, decimals(name, values)), from_pandas=True) for name, values in columns.items()})
     sink = pa.BufferOutputStream()
     arrow_csv.write_csv(table, sink, arrow_csv.WriteOptions(quoting_style="none"))
     return bytes(sink.getvalue())

@@ -14,6 +14,7 @@ STEP_S = 0.0005
 
 REFRACTORY_S = 0.25
 RESTITUTION_S = 0.16
+REFLEX_TIME_S = 3.0
 POTENTIATION = 1.2
 POTENTIATION_DECAY = 0.35
 
@@ -23,7 +24,8 @@ class Occlusion:
     """A fall of the filling pressure: exponential from ``onset_s`` towards ``floor`` (a fraction), back after ``deflation_s``.
 
     The way back takes the same time constant: the blood stored between the balloon and the ventricle empties and fills alike.
-    ``reflex`` is the fraction by which the heart rate has risen long after, beginning ``reflex_delay_s`` after the onset.
+    ``reflex`` is the fraction by which the heart rate has risen long after, beginning ``reflex_delay_s`` after the onset, and
+    ``reflex_force`` that by which the force has.
     """
 
     onset_s: float = 5.0
@@ -32,6 +34,11 @@ class Occlusion:
     deflation_s: float | None = None
     reflex: float = 0.0
     reflex_delay_s: float = 6.0
+    reflex_force: float = 0.0
+
+    def reflex_grown(self, run_s: float) -> float:
+        """Return how far the reflex has come at that time of the run, 0 before it begins and 1 long after."""
+        return 1.0 - math.exp(-max(run_s - self.onset_s - self.reflex_delay_s, 0.0) / REFLEX_TIME_S)
 
 
 @dataclass(frozen=True, slots=True)
@@ -124,6 +131,8 @@ def schedule(rr_s: float, conditions: Conditions, warm_up_s: float, rng: np.rand
         strength = _restitution(cycle_s, rr_s) if is_premature else 1.0 + potentiation
         potentiation = POTENTIATION * (1.0 - strength) if is_premature else potentiation * POTENTIATION_DECAY
         onsets.append(now + max(round(cycle_s / STEP_S), 1) * STEP_S)
+        if conditions.occlusion is not None and conditions.occlusion.reflex_force:
+            strength *= 1.0 + conditions.occlusion.reflex_force * conditions.occlusion.reflex_grown(onsets[-1] - warm_up_s)
         is_aberrant = bool(astray) and not is_premature and onsets[-1] >= astray[0]
         if is_aberrant:
             astray.pop(0)
@@ -158,7 +167,6 @@ def _sinus_cycle_s(rr_s: float, conditions: Conditions, clock_s: float, run_s: f
     if conditions.breathing is not None:
         cycle_s *= 1.0 + conditions.breathing.sinus_depth * math.sin(2.0 * math.pi * conditions.breathing.rate_per_min / 60.0 * clock_s)
     occlusion = conditions.occlusion
-    if occlusion is not None and run_s > occlusion.onset_s + occlusion.reflex_delay_s:
-        since_s = run_s - occlusion.onset_s - occlusion.reflex_delay_s
-        cycle_s /= 1.0 + occlusion.reflex * (1.0 - math.exp(-since_s / 3.0))
+    if occlusion is not None:
+        cycle_s /= 1.0 + occlusion.reflex * occlusion.reflex_grown(run_s)
     return cycle_s
