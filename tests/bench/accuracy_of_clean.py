@@ -217,7 +217,7 @@ def measured(seeds: int, tell: Callable[[str], object]) -> list[Found]:
 def main() -> int:
     """Print the table and the misses; return 1 when there are any."""
     parser = argparse.ArgumentParser(description=__doc__, formatter_class=argparse.RawDescriptionHelpFormatter)
-    parser.add_argument("--seeds", type=int, default=5, help="recordings of each heart (default 5, about half a minute)")
+    parser.add_argument("--seeds", type=int, default=5, help="recordings of each heart (default 5, about a minute)")
     found = measured(parser.parse_args().seeds, sys.stderr.write)
     missed = misses(found)
     told = [*table(found), f"{len(found)} values, {len(missed)} targets missed", *missed]

@@ -22,6 +22,8 @@ EXACT = 1e-6
 """Everything on the way is linear in a gain or passes an offset through."""
 ITERATED = dict.fromkeys(("ESP", "Ea", "Ees", "V0", "Ees_Ea"), 1e-3)
 """V0 is iterated to 0.01 mL, so now and then an end-systole may move to its neighbour; V0's as a fraction of EDV."""
+RELAXED = dict.fromkeys(("ESV", "SV", "EF", "Ea", "Ees_Ea"), 2e-3)
+"""A right ventricle's smallest volume is looked for until pressure is within 5 mmHg of EDP: in noise a gain may move that by a sample."""
 MEDIANS = 3e-3
 """A median of ratios is not the ratio of medians, which is what the prediction for an offset is made of."""
 
@@ -98,7 +100,7 @@ def test_volume_offset(case, offset):
 @FEW
 @given(gain=GAIN)
 def test_pressure_gain(case, gain):
-    check(case, "pressure", gain, 0.0, pressure_gain, ITERATED)
+    check(case, "pressure", gain, 0.0, pressure_gain, ITERATED | (RELAXED if case[0].startswith("right") else {}))
 
 
 @pytest.mark.parametrize("case", CASES, ids="-".join)
