@@ -35,7 +35,7 @@ def zero_phase(samples: FloatArray, sampling_rate_hz: float) -> FloatArray:
     return filtered
 
 
-def slope_per_s(samples: FloatArray, sampling_rate_hz: float, chamber: str = "LV") -> FloatArray:
+def slope_per_s(samples: FloatArray, sampling_rate_hz: float, chamber: str = "LV", *, window_s: float = SLOPE_WINDOW_S) -> FloatArray:
     """Return the time derivative by a local polynomial; same shape, unit per second; zeros where there are too few samples for one.
 
     Savitzky and Golay 1964, Anal Chem 36:1627 (from memory).
@@ -44,7 +44,7 @@ def slope_per_s(samples: FloatArray, sampling_rate_hz: float, chamber: str = "LV
     1.0
     """
     order = SLOPE_ORDER[chamber]
-    window = max(order + 2, round(SLOPE_WINDOW_S * sampling_rate_hz) | 1)
+    window = max(order + 2, round(window_s * sampling_rate_hz) | 1)
     if samples.size < window:
         return np.zeros_like(samples)
     slope: FloatArray = signal.savgol_filter(samples, window, order, deriv=1, delta=1.0 / sampling_rate_hz)

@@ -14,6 +14,7 @@ from scipy.signal import savgol_filter
 from metrics.arrays import FloatArray, IntArray, argmax_within, argmin_within, taken
 from metrics.signals.beats import Beats
 from metrics.signals.calibrate import Signals
+from metrics.signals.filters import slope_per_s
 from metrics.signals.r_waves import r_waves
 from metrics.signals.segment import upstrokes
 
@@ -21,6 +22,7 @@ UPSTROKE_SHARE = 0.10
 UPSTROKE_SEARCH_S = 0.250
 RELAXED_ABOVE_EDP_MMHG = 5.0
 LANDMARK_WINDOW_S = 0.040
+STEEPEST_WINDOW_S = 0.080
 
 
 def beats_of(signals: Signals, chamber: str) -> Beats:
@@ -35,6 +37,7 @@ def beats_of(signals: Signals, chamber: str) -> Beats:
     peak, this_r, next_r = peak[:-1], r_at[:-1], r_at[1:]
     upstroke_s = np.diff(diastole) / rate
     rr_s = np.where((this_r >= 0) & (next_r >= 0), (next_r - this_r) / rate, upstroke_s)
+    peak = steepest(signals, peak, start, end, chamber)
     relaxing = argmin_within(signals.dpdt_mmhg_per_s, peak + 1, end)
     pmax_at = argmax_within(signals.pressure_mmhg, start, np.where(relaxing >= 0, relaxing, end))
     smooth_volume = steadied(signals.volume_ml, rate)
@@ -56,6 +59,20 @@ def beats_of(signals: Signals, chamber: str) -> Beats:
         dpdt_min_mmhg_per_s=taken(signals.dpdt_mmhg_per_s, relaxing),
         sw_mmhg_ml=loop_areas(signals.pressure_mmhg, signals.volume_ml, start, end),
     )
+
+
+def steepest(signals: Signals, peak: IntArray, start: IntArray, end: IntArray, chamber: str) -> IntArray:
+    """Return where each beat's dP/dt maximum is read; shape of ``peak``.
+
+    The largest of noisy values lies above the largest value. In the right ventricle, whose upstroke is slow, that costs 3 to 6 % at
+    0.5 mmHg and 250 Hz (computed); so there the instant comes from a window of 80 ms, and dP/dt is read at it. A left ventricle's
+    upstroke is too short for that: its maximum stays where it is.
+    """
+    if chamber != "RV":
+        return peak
+    slow = slope_per_s(signals.pressure_mmhg, signals.sampling_rate_hz, chamber, window_s=STEEPEST_WINDOW_S)
+    half = round(STEEPEST_WINDOW_S / 2.0 * signals.sampling_rate_hz)
+    return argmax_within(slow, np.maximum(peak - half, start + 1), np.minimum(peak + half + 1, end))
 
 
 def end_diastoles(dpdt_mmhg_per_s: FloatArray, peak: IntArray, sampling_rate_hz: float) -> IntArray:
