@@ -12,7 +12,6 @@ from __future__ import annotations
 
 import numpy as np
 
-from checks.beat.cycle_length import PREMATURE, has_second_sign, preceding_ratio
 from checks.check import Check, Level, Limits, Measured
 from checks.subject import RunSubject
 from metrics.arrays import FloatArray, robust_sd, running_median
@@ -21,13 +20,16 @@ TREND_BEATS = 7
 LEADING_BEATS = 4
 SPREAD_SD = 4.0
 IRREGULAR_CV = 0.10
+RR_NEIGHBOURS = 9
+ODD_INTERVAL = 0.08
+"""Breathing moves RR by less in most adults, a premature beat by more; house default."""
 
 
 def closure_gap(subject: RunSubject) -> Measured:
     """Return the gap of each loop beyond the run's trend as a fraction of its SV where it stands out of the spread, else 0.
 
-    Shape (n_beats,). NaN in declared atrial fibrillation, in a run whose RR varies by more than 10 % (robust CV), beside a premature
-    beat, after the usable window of a preload-reduction run, and where SV is not positive.
+    Shape (n_beats,). NaN in declared atrial fibrillation, in a run whose RR varies by more than 10 % (robust CV), where the interval
+    before or after the loop is odd by more than 8 %, after the usable window of a preload-reduction run, and where SV is not positive.
     """
     beats, signals = subject.known_beats(), subject.known_signals()
     if len(beats) == 0:
@@ -45,13 +47,13 @@ def closure_gap(subject: RunSubject) -> Measured:
     is_irregular = robust_sd(beats.rr_s) / float(np.median(beats.rr_s)) > IRREGULAR_CV
     if is_irregular or subject.facts.rhythm == "atrial-fibrillation":
         share[:] = np.nan
-    premature = (preceding_ratio(beats.rr_s) < (PREMATURE.limits.fail_below or 0.0)) & has_second_sign(subject)
+    # a loop's ends are filled by the intervals before and after it: an odd one moves an end as a volume drift would
+    odd = np.abs(beats.rr_s / running_median(beats.rr_s, RR_NEIGHBOURS) - 1.0) > ODD_INTERVAL
+    share[odd | np.append(False, odd[:-1])] = np.nan
     if subject.window is not None:
         # after the window the ventricle refills as fast as the deflation lets it: no trend to hold a gap against
         place = np.arange(len(beats))
         share[(place > subject.window.last_at) | ((place == subject.window.last_at) & (gap_ml > 0.0))] = np.nan
-    beside = premature | np.append(premature[1:], False) | np.append(False, premature[:-1])
-    share[beside] = np.nan
     return Measured(share, subject.start_s())
 
 
