@@ -8,7 +8,7 @@ from __future__ import annotations
 from itertools import groupby, pairwise
 from typing import TYPE_CHECKING
 
-from flows.reports.figures import Data, Scale, element, finite, label, line, scale_over, trail
+from flows.reports.figures import Data, Scale, element, finite, label, line, scale_over, text_width, trail
 from flows.reports.figures_rhythm import rhythm_drawing
 from flows.reports.wording import is_number, number, quantity
 
@@ -121,7 +121,7 @@ def _measure(finding: Data, beat: Data, loop: Data | None, axes: tuple[Scale, Sc
         words = f"SV {quantity(beat['edv_ml'] - beat['esv_ml'], 'mL')} of EDV {quantity(beat['edv_ml'], 'mL')}"
         return [
             line((left, high), (right, high), "gauge"),
-            label((left + right) / 2, high - 7, words, anchor="middle", class_="label value"),
+            label(max((left + right) / 2, x.at(x.low) + text_width(words) / 2), high - 7, words, anchor="middle", class_="label value"),
         ], words + "."
     if check in _LEVELS and is_number(beat.get(_LEVELS[check][0])):
         key, name, unit = _LEVELS[check]

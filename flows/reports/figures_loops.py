@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from typing import TYPE_CHECKING
 
-from flows.reports.figures import Data, Scale, element, figure, finite, joined, label, line, trail
+from flows.reports.figures import Data, Scale, element, figure, finite, joined, label, line, text_width, trail
 from flows.reports.wording import counted, number
 
 if TYPE_CHECKING:
@@ -99,7 +99,8 @@ def accepted_together(run: Data, name: str) -> Markup | None:
         parts.append(element("path", d=trail(template["volume_ml"], template["pressure_mmhg"], x, y) + "Z", class_="template over"))
     parts += [line((38, bottom), (width - 8, bottom), "axis"), line((38, bottom), (38, 14), "axis")]
     for tick in x.ticks(4):
-        parts.append(label(x.at(tick), bottom + 15, number(tick), anchor="middle", class_="label quiet"))
+        middle = min(x.at(tick), width - text_width(number(tick)) / 2)
+        parts.append(label(middle, bottom + 15, number(tick), anchor="middle", class_="label quiet"))
     for tick in y.ticks(4):
         parts.append(label(33, y.at(tick) + 4, number(tick), anchor="end", class_="label quiet"))
     parts += [label(width - 8, bottom + 29, "mL", anchor="end", class_="label quiet"), label(42, 18, "mmHg", class_="label quiet")]

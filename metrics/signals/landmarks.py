@@ -14,7 +14,7 @@ from scipy.signal import savgol_filter
 from metrics.arrays import FloatArray, IntArray, argmax_within, argmin_within, taken
 from metrics.signals.beats import Beats
 from metrics.signals.calibrate import Signals
-from metrics.signals.filters import slope_per_s
+from metrics.signals.filters import slope_per_s, zero_phase
 from metrics.signals.r_waves import r_waves
 from metrics.signals.segment import upstrokes
 
@@ -140,3 +140,17 @@ def loop_areas(pressure_mmhg: FloatArray, volume_ml: FloatArray, start: IntArray
     closing = volume_ml[end] * pressure_mmhg[start] - volume_ml[start] * pressure_mmhg[end]
     area: FloatArray = 0.5 * (summed[end] - summed[start] + closing)
     return area
+
+
+def landmark_noise_ml(signals: Signals) -> float:
+    """Return the standard deviation of the noise in a volume read at a landmark, mL.
+
+    White noise of the size its residual shows, sent through the common filter and `steadied`; coloured noise is underestimated.
+    """
+    impulse = np.zeros(2 * round(signals.sampling_rate_hz) + 1)
+    impulse[impulse.size // 2] = 1.0
+    passed = zero_phase(impulse, signals.sampling_rate_hz)
+    taken_away = float(np.linalg.norm(impulse - passed))
+    if taken_away == 0.0:
+        return 0.0
+    return signals.volume_noise_ml * float(np.linalg.norm(steadied(passed, signals.sampling_rate_hz))) / taken_away

@@ -92,6 +92,38 @@ def deming_line(x: FloatArray, y: FloatArray, noise_ratio: float, confidence: fl
     return interval_of(slope, constant, covariance, n, confidence)
 
 
+LEAST_SHARE = 0.5
+"""Noise is taken for at most half of the loads' variance: beyond that a correction is a guess; house default."""
+
+
+def unattenuated_line(x: FloatArray, y: FloatArray, noise_variance: float, confidence: float = 0.95) -> Line:
+    """Return the line of y on x freed of what noise in x takes from the slope, with t intervals from the jackknife; shapes (n,).
+
+    ``noise_variance`` is that of one x. Unlike Deming's, it leaves curvature and beat-to-beat change to y: where points scatter for
+    other reasons than noise, Deming's line is too steep (Carroll and Ruppert 1996, Am Stat 50:1; Fuller 1987, Measurement Error Models;
+    both from memory). Raises ValueError with fewer than four points or no spread in x.
+    """
+    _demand_points(x, 4)
+    slope, constant = _unattenuated_rows(x[None, :], y[None, :], noise_variance)
+    n = x.size
+    others = ~np.eye(n, dtype=bool)
+    slopes, constants = _unattenuated_rows(
+        np.broadcast_to(x, (n, n))[others].reshape(n, n - 1), np.broadcast_to(y, (n, n))[others].reshape(n, n - 1), noise_variance
+    )
+    stands = bool(np.isfinite(slopes).all())
+    covariance = (n - 1) ** 2 / n * np.cov(slopes, constants) if stands else np.full((2, 2), np.inf)
+    return interval_of(float(slope[0]), float(constant[0]), covariance, n, confidence)
+
+
+def _unattenuated_rows(x: FloatArray, y: FloatArray, noise_variance: float) -> tuple[FloatArray, FloatArray]:
+    """Return slopes and constants of every row, shape (n_rows,)."""
+    dx, dy = x - x.mean(axis=1, keepdims=True), y - y.mean(axis=1, keepdims=True)
+    sxx = (dx**2).sum(axis=1)
+    with np.errstate(divide="ignore", invalid="ignore"):
+        slope = (dx * dy).sum(axis=1) / np.maximum(sxx - (x.shape[1] - 1) * noise_variance, LEAST_SHARE * sxx)
+    return slope, y.mean(axis=1) - slope * x.mean(axis=1)
+
+
 def interval_of(slope: float, constant: float, covariance: FloatArray, points: int, confidence: float = 0.95) -> Line:
     """Return the line with t intervals (points - 2 degrees of freedom) from the covariance of (slope, constant), shape (2, 2)."""
     t = float(stats.t.ppf(0.5 + confidence / 2.0, points - 2))
