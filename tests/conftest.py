@@ -10,10 +10,14 @@ from datetime import datetime, timedelta, timezone
 from pathlib import Path
 
 import pytest
+from hypothesis import settings
 
 from flows.sources.simulated.acquisition import Identity, Recipe, made, rest_and_ramp
 from flows.sources.simulated.heart import heart_named
 from flows.sources.simulated.package import write_package
+
+settings.register_profile("same-every-time", derandomize=True, deadline=None)
+settings.load_profile("same-every-time")
 
 PROTOCOL = '[study]\nname = "tarn"\nversion = "1"\n\n[sites.harbour]\ntimezone = "Europe/Lisbon"\n'
 

@@ -102,7 +102,7 @@ def scale_over(values: Iterable[object], start_px: float, end_px: float, *, room
     low, high = (min(known), max(known)) if known else (0.0, 1.0)
     span = high - low
     if span <= 1e-9 * max(abs(low), abs(high), 1e-9):
-        span = abs(high) or 1.0
+        span = max(abs(high), 1e-9) if high else 1.0
         low, high = low - span / 2, high + span / 2
     return Scale(low - room * span, high + room * span, start_px, end_px)
 
