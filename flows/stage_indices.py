@@ -71,10 +71,17 @@ def stage_v0_ml(stage: Stage) -> float | None:
 def _rows_of(index: Index, stage: Stage, v0_ml: float | None) -> list[IndexRow]:
     steady, pre_onset = _steady_runs(stage, index.name)
     preload = _preload_runs(stage, index.name)
-    beats = StageBeats(steady, _chief(preload), v0_ml, pre_onset, stage.bsa_m2)
+    chief = _chief(preload)
+    beats = StageBeats(steady, chief, v0_ml, pre_onset, stage.bsa_m2)
     spoiled = spoilers(index.name, stage.failed)
     lost = [run for run in stage.runs if _matters(run, index) and (not run.is_usable or spoilers(index.name, run.failed))]
     why = [stage.reasons[check.name] for check in spoiled] + [_run_reason(run, index) for run in lost]
+    if index.source is not Source.STEADY:
+        why += [
+            f"without run {run.run}: its manoeuvre ({run.manoeuvre or 'undeclared'}) is not pooled with the others"
+            for run in preload
+            if run not in chief
+        ]
     rows = [_row(index, beats, run=None, spoiled=bool(spoiled), why=why)]
     for run in steady if index.source is Source.STEADY else preload:
         alone = replace(beats, steady=(run,)) if index.source is Source.STEADY else replace(beats, preload=(run,))

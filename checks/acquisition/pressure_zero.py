@@ -28,7 +28,7 @@ CHECK = Check(
     measure=zero_readings,
     unit="1",
     limits=Limits(suspect_below=2.0, fail_below=1.0, basis="house default; a zero before and after is common practice, no source"),
-    reason="{value:.0f} zero readings were sent; the pressure offset is not known as well as it should be (limit {limit:.0f})",
+    reason="zero readings sent: {value:.0f}; the pressure offset is not known as well as it should be (limit {limit:.0f})",
     remedy="send the zero readings taken before and after the recording, with their times",
     spoils=PRESSURE_OFFSET,
 )

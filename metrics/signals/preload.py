@@ -20,6 +20,9 @@ REFLEX_SHARE = 0.10
 ONSET_SHARE = 0.05
 """The onset is where EDV has gone 5 % of the whole fall; house default."""
 
+EVENT_EARLY_BEATS, EVENT_LATE_BEATS = 6, 3
+"""A balloon takes a few beats to fill, so an event may come so much before the fall, and a hand so much after it; house default."""
+
 
 @dataclass(frozen=True, slots=True)
 class PreloadWindow:
@@ -60,16 +63,21 @@ def _event_samples(facts: RunFacts, kind: str, sampling_rate_hz: float) -> list[
 
 
 def _onset_and_nadir(beats: Beats, load_ml: FloatArray, ons: list[float]) -> tuple[int, int, str]:
-    """Return onset and nadir from the declared events, or from the load itself."""
+    """Return onset and nadir: from a declared event where the load bears it out, else from the load itself.
+
+    An event more than a few beats from where the load begins to fall was timed by another clock; it must not place the window.
+    """
     nadir = int(np.argmin(load_ml))
     onsets = [int(np.searchsorted(beats.start, on)) for on in ons]
     before = [onset for onset in onsets if onset <= nadir]
     if before:
-        onset = before[-1]
-        return onset, onset + int(np.argmin(load_ml[onset:])), "event"
+        nadir = before[-1] + int(np.argmin(load_ml[before[-1] :]))
     top = float(np.max(load_ml[: nadir + 1]))
     full = np.flatnonzero(load_ml[: nadir + 1] >= top - ONSET_SHARE * (top - load_ml[nadir]))
-    return int(full[-1]), nadir, "load"
+    falls = int(full[-1])
+    if before and -EVENT_LATE_BEATS <= falls - before[-1] <= EVENT_EARLY_BEATS:
+        return before[-1], nadir, "event"
+    return falls, nadir, "load"
 
 
 def _deflated(beats: Beats, offs: list[float], onset: int, nadir: int) -> tuple[int, str]:

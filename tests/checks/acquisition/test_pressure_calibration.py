@@ -46,7 +46,7 @@ def test_the_run_with_the_fewest_zero_readings_speaks():
 
 def test_how_many_zeros_were_sent_stands_in_the_reason():
     judged = found("pressure-zero", zeros())
-    assert sentence(judged, 0).startswith("0 zero readings were sent")
+    assert sentence(judged, 0).startswith("zero readings sent: 0;")
 
 
 @pytest.mark.parametrize("sign", [1.0, -1.0])

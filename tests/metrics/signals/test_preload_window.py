@@ -54,6 +54,13 @@ def test_an_onset_declared_after_the_nadir_is_no_onset():
     assert window(events=((1e6, "occlusion-on"),)).found_by == "load"
 
 
+@pytest.mark.parametrize("declared", [1, 14])
+def test_an_event_timed_by_another_clock_places_no_window(declared):
+    found = window([120.0] * 6 + EDV_ML, events=on(declared + (6 if declared > 8 else 0)))
+    assert found.found_by == "load"
+    assert abs(found.onset_at - 14) <= 1
+
+
 def test_of_two_occlusions_the_last_before_the_deepest_load_counts():
     twice = EDV_ML + REST + [value - 3.0 for value in FALL] + RISE
     found = window(twice, events=on(8) + on(COUNT + 8))
