@@ -104,7 +104,6 @@ class Check:
     after_beats: bool = False
     required: bool = False
     revision: int = 1
-    doc: str = ""
 
     def limits_for(self, chamber: str) -> Limits:
         """Return the default limits for a chamber (LV or RV)."""

@@ -10,7 +10,7 @@ import numpy as np
 from metrics.arrays import BoolArray, FloatArray, IntArray
 from metrics.signals.beats import Beats
 from metrics.signals.calibrate import Signals
-from metrics.signals.facts import AcquisitionFacts, RunFacts
+from metrics.signals.facts import AcquisitionFacts, PressureCalibration, RunFacts
 from metrics.signals.preload import PreloadWindow, preload_window
 from metrics.signals.recording import Channel, Recording
 
@@ -88,6 +88,10 @@ class AcquisitionSubject:
 
     facts: AcquisitionFacts
     runs: tuple[RunSubject, ...] = ()
+
+    def pressure_calibrations(self) -> tuple[PressureCalibration, ...]:
+        """Return the pressure calibration of each run, or the acquisition's own where there are no runs."""
+        return tuple(run.facts.pressure for run in self.runs) or (self.facts.pressure,)
 
     def steady_medians(self) -> dict[str, float]:
         """Return the median ``edv_ml``, ``esv_ml`` and ``sv_ml`` of the accepted beats at rest; NaN without any.

@@ -93,13 +93,15 @@ def _row(index: Index, beats: StageBeats, *, run: str | None, spoiled: bool, why
     """Return one row: the estimate, or why there is none."""
     estimate: Estimate | None = None
     reason = "; ".join(why) or None
+    bearing = [one for one in (beats.steady if index.source is Source.STEADY else beats.preload) if one.chosen.any()]
     try:
         estimate = None if spoiled else index.compute(beats)
     except Withheld as trouble:
         reason = reason or str(trouble)
     if estimate is not None and not np.isfinite(estimate.value):
         estimate, reason = None, reason or "the estimate is not a finite number"
-    bearing = beats.steady if index.source is Source.STEADY else beats.preload
+    if estimate is not None:
+        reason = "; ".join([*why, *(f"without {told}" for told in estimate.left_out)]) or None
     status = WITHHELD if estimate is None else PUBLISHED
     return {
         "run": run,
@@ -113,7 +115,7 @@ def _row(index: Index, beats: StageBeats, *, run: str | None, spoiled: bool, why
         "fit_ci_low": None if estimate is None else _bounded(estimate.fit_low),
         "fit_ci_high": None if estimate is None else _bounded(estimate.fit_high),
         "beats": None if estimate is None else estimate.beats,
-        "runs": None if estimate is None else len(bearing),
+        "runs": None if estimate is None else estimate.runs or len(bearing),
         "status": status,
         "machine_status": status,
         "reason": reason,

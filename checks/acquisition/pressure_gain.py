@@ -32,7 +32,7 @@ def gain_error(calibration: PressureCalibration) -> float:
 
 def pressure_gain(subject: AcquisitionSubject) -> Measured:
     """Return the largest gain error any run is calibrated with, as a fraction, shape ()."""
-    errors = [gain_error(run.facts.pressure) for run in subject.runs] or [gain_error(subject.facts.pressure)]
+    errors = [gain_error(calibration) for calibration in subject.pressure_calibrations()]
     known = [error for error in errors if np.isfinite(error)]
     return single(max(known) if known else np.nan)
 

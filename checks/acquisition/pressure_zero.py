@@ -17,8 +17,7 @@ def zero_readings(subject: AcquisitionSubject) -> Measured:
     >>> float(zero_readings(AcquisitionSubject(AcquisitionFacts())).value)
     0.0
     """
-    counts = [len(run.facts.pressure.zeros) for run in subject.runs] or [len(subject.facts.pressure.zeros)]
-    return single(min(counts))
+    return single(min(len(calibration.zeros) for calibration in subject.pressure_calibrations()))
 
 
 CHECK = Check(

@@ -36,7 +36,7 @@ def drift_mmhg(calibration: PressureCalibration) -> float:
 
 def zero_drift(subject: AcquisitionSubject) -> Measured:
     """Return the largest drift any run is calibrated with, mmHg, shape (); its sign is ignored."""
-    drifts = [drift_mmhg(run.facts.pressure) for run in subject.runs] or [drift_mmhg(subject.facts.pressure)]
+    drifts = [drift_mmhg(calibration) for calibration in subject.pressure_calibrations()]
     known = [drift for drift in drifts if np.isfinite(drift)]
     return single(max(known) if known else np.nan)
 

@@ -9,7 +9,7 @@ from typing import TYPE_CHECKING, Any, cast
 
 from sqlalchemy import Select, and_, func, select
 
-from flows.catalogue.models import AssessmentRow, EntryRow, ReleaseRow
+from flows.catalogue.models import AssessmentRow, EntryRow
 from flows.catalogue.outcome import Trouble
 from flows.catalogue.results import LISTED, AcquisitionRow
 from flows.intake.register import Entry
@@ -77,11 +77,6 @@ def columns(session: Session, basis: Basis, table: str) -> Columns:
     if table == "packages":
         return _packages(session, basis)
     return _columns(session, _acquisitions(basis) if table == "acquisitions" else _listed(basis, table))
-
-
-def newest_release(session: Session) -> str | None:
-    """Return the name of the release recorded last."""
-    return session.scalars(select(ReleaseRow.name).order_by(ReleaseRow.id.desc()).limit(1)).first()
 
 
 def _packages(session: Session, basis: Basis) -> Columns:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable
-from dataclasses import dataclass, field
+from dataclasses import dataclass
 from enum import StrEnum
 from functools import cached_property
 
@@ -29,12 +29,17 @@ class Source(StrEnum):
 
 @dataclass(frozen=True, slots=True)
 class Estimate:
-    """A finite value with the 95 % interval of its fit (None where the sample is too small for one), and the beats it came from."""
+    """A finite value with the 95 % interval of its fit (None where the sample is too small for one), and the beats it came from.
+
+    ``runs`` is how many runs bear it where that is fewer than were offered; ``left_out`` says of each of the others why.
+    """
 
     value: float
     fit_low: float | None
     fit_high: float | None
     beats: int
+    runs: int | None = None
+    left_out: tuple[str, ...] = ()
 
 
 @dataclass(frozen=True)
@@ -108,4 +113,3 @@ class Index:
     compute: Callable[[StageBeats], Estimate]
     needs: str
     revision: int = 1
-    doc: str = field(default="", repr=False)

@@ -24,7 +24,7 @@ def coupling(stage: StageBeats) -> Estimate:
         ea_half = 0.0 if ea.fit_low is None or ea.fit_high is None else (ea.fit_high - ea.fit_low) / 2.0
         half = ratio * float(np.hypot((ees.fit_high - ees.fit_low) / 2.0 / ees.value, ea_half / ea.value))
         low, high = ratio - half, ratio + half
-    return Estimate(ratio, low, high, ees.beats)
+    return Estimate(ratio, low, high, ees.beats, ees.runs, ees.left_out)
 
 
 COUPLING = Index(
