@@ -1,12 +1,14 @@
-"""What a check or an index is, in words: what it measures, its limits and their basis, what it spoils or needs."""
+"""What a check or an index is, in words: what it measures, its limits and their basis, what it spoils or needs; a table of all checks."""
 
 from __future__ import annotations
 
 import inspect
+import re
 import sys
 
 from checks import ALL as CHECKS
-from checks.check import Check, Limits
+from checks import spoils
+from checks.check import Check, Level, Limits
 from flows.errors import InputError
 from flows.study.names import did_you_mean
 from metrics.indices import ALL as INDICES
@@ -23,6 +25,52 @@ def explain(name: str) -> str:
     remedy = did_you_mean(name, [*checks, *indices])
     problem = "is neither a check nor an index"
     raise InputError(problem, file="explain", field="NAME", value=name, remedy=remedy)
+
+
+def checks_table() -> str:
+    """Return the text of `checks/README.md`: one table of all checks, in the order they are evaluated in."""
+    head = ("check", "looks at", "title", "measures", "unit", "limits", "a fail withholds", "revision")
+    rows = [
+        (
+            f"`{check.name}`",
+            f"each {check.level}",
+            check.title,
+            _measured(check),
+            "-" if check.is_fact else check.unit,
+            _bounds(check),
+            _spoiled(check),
+            str(check.revision),
+        )
+        for check in CHECKS
+    ]
+    lines = ["| " + " | ".join(cell.replace("|", "\\|") for cell in row) + " |" for row in (head, *rows)]
+    lines.insert(1, "|" + "---|" * len(head))
+    told = "What every check measures and where its limits stand; `beatgate explain NAME` tells why, from which source, and what to do."
+    return "\n".join(["# Checks", "", told, "Written by `flows.explain.checks_table`; a test holds it against the code.", "", *lines, ""])
+
+
+def _measured(check: Check) -> str:
+    """Return the first line of a measure's docstring, without what only callers need."""
+    lines = (check.measure.__doc__ or "").strip().splitlines()
+    if not lines:
+        return check.title.removesuffix(" possible")
+    return re.sub(r"[;,]? ?shape \([^)]*\)", "", lines[0]).removeprefix("Return ").rstrip(".")
+
+
+def _bounds(check: Check) -> str:
+    sides = [("", check.limits)] + ([("right ventricle: ", check.limits_rv)] if check.limits_rv is not None else [])
+    told = [label + ", ".join(f"{n.replace('_', ' ')} {getattr(limits, n):g}" for n in limits.declared()) for label, limits in sides]
+    return "; ".join(told)
+
+
+def _spoiled(check: Check) -> str:
+    """Return the name of the set of indices a fail withholds, or how many there are where none has that name."""
+    if check.level is Level.BEAT:
+        return "the beat"
+    if not check.spoils:
+        return "nothing"
+    named = [name for name, value in vars(spoils).items() if isinstance(value, frozenset) and value == check.spoils]
+    return (f"`{named[0]}`, " if named else "") + f"{len(check.spoils)} indices"
 
 
 def _check(check: Check) -> str:

@@ -55,7 +55,7 @@ def prematurity(subject: RunSubject) -> Measured:
 
 
 def prematurity_before(subject: RunSubject) -> Measured:
-    """Return, for each beat, the prematurity of the beat before it where that is borne out, else 1; shape (n_beats,)."""
+    """Return the prematurity of the beat before each where that is borne out, else 1; shape (n_beats,)."""
     ratio = preceding_ratio(subject.known_beats().rr_s)
     told = np.where(has_second_sign(subject) & np.isfinite(ratio), ratio, 1.0)
     return Measured(np.concatenate([[1.0], told[:-1]])[: told.size], subject.start_s())

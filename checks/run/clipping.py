@@ -54,12 +54,12 @@ def clipped_beats(subject: RunSubject, name: str) -> Measured:
 
 
 def clipped_pressure(subject: RunSubject) -> Measured:
-    """Return `clipped_beats` of the pressure channel."""
+    """Return how many beats touch a rail of the pressure channel, and when the first does; shape ()."""
     return clipped_beats(subject, "pressure")
 
 
 def clipped_volume(subject: RunSubject) -> Measured:
-    """Return `clipped_beats` of the volume channel."""
+    """Return how many beats touch a rail of the volume channel, and when the first does; shape ()."""
     return clipped_beats(subject, "volume")
 
 
