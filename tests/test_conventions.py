@@ -37,7 +37,19 @@ IN_UCUM = (
     "mm[Hg]/mL/s, W, mW, W/mL2, mW/mL2"
 )
 UCUM = frozenset(IN_UCUM.split(", "))
-FAMILIES = {"post-premature": "cycle_length"}
+FAMILIES = {
+    "post-premature": "cycle_length",
+    "pressure-units": "units",
+    "volume-units": "units",
+    "swapped-channels": "wiring",
+    "pressure-inverted": "wiring",
+    "volume-inverted": "wiring",
+    "loop-direction": "wiring",
+    "pressure-flat": "standstill",
+    "volume-flat": "standstill",
+    "pressure-dropout": "standstill",
+    "volume-dropout": "standstill",
+}
 """Checks that stand in the file of the one they share a measure with."""
 
 LONGEST_MODULE = 400

@@ -8,8 +8,11 @@ from checks.run import (
     preload_adequacy,
     readable,
     sampling_rate,
+    standstill,
     time_base,
     time_gaps,
+    units,
+    wiring,
 )
 
 ALL = (
@@ -24,4 +27,14 @@ ALL = (
     clipping.VOLUME,
     preload_adequacy.ADEQUACY,
     preload_adequacy.BEATS,
+    units.PRESSURE,
+    units.VOLUME,
+    wiring.SWAPPED,
+    wiring.PRESSURE_INVERTED,
+    wiring.VOLUME_INVERTED,
+    wiring.DIRECTION,
+    standstill.FLAT_PRESSURE,
+    standstill.FLAT_VOLUME,
+    standstill.HELD_PRESSURE,
+    standstill.HELD_VOLUME,
 )

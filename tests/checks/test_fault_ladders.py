@@ -10,6 +10,8 @@ from tests.checks.made_subjects import CHECKS, beats_at
 
 GRADE = {Verdict.PASS: 0, Verdict.NOT_EVALUATED: 0, Verdict.SUSPECT: 1, Verdict.FAIL: 2}
 RANGES = {check.name for check in ALL if check.name.startswith("range-")}
+WIRING = {"pressure-units", "volume-units", "swapped-channels", "pressure-inverted", "volume-inverted", "loop-direction"}
+STANDSTILL = {"pressure-flat", "volume-flat", "pressure-dropout", "volume-dropout"}
 GROSS = {"samples-scattered": Verdict.SUSPECT}
 """How the grossest fault of a ladder is judged where that is no fail: a fifth of the samples may go, beat by beat."""
 
@@ -18,8 +20,8 @@ ALSO_FOUND = {
     "flat-line": {"loop-closure"} | RANGES,
     "premature-beats": {"loop-closure"},
     "volume-clipped": {"reference-stroke-volume", "reference-volumes"},
-    "pressure-in-kpa": RANGES | {"preload-beats"},
-    "volume-times": RANGES | {"preload-beats", "reference-stroke-volume", "reference-volumes"},
+    "pressure-in-kpa": RANGES | {"preload-beats", "pressure-units"},
+    "volume-times": RANGES | {"preload-beats", "volume-units", "reference-stroke-volume", "reference-volumes"},
 }
 """What else a fault truly breaks beside the check it is made for."""
 
@@ -27,6 +29,8 @@ ELSEWHERE = {
     "landmarks": "a drawn beat's landmarks are moved, tests/checks/beat/test_landmarks_and_ranges.py",
     "beats-found": "a drawn run has ever fewer beats, tests/checks/run/test_time.py",
     "preload-beats": "ever fewer beats are accepted, tests/checks/run/test_preload.py",
+    **dict.fromkeys(WIRING, "wired wrongly in some runs, tests/checks/run/test_wiring_and_units.py"),
+    **dict.fromkeys(STANDSTILL, "ever more of a run stands still, tests/checks/run/test_standstill.py"),
     **dict.fromkeys(RANGES, "drawn beats run away, tests/checks/beat/test_landmarks_and_ranges.py"),
 }
 """Checks whose ladder no simulated fault climbs, and where it stands."""

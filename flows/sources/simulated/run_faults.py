@@ -56,17 +56,17 @@ def in_some(sound: Acquisition, share: float, column: str, change: Change, check
 
 def pressure_sent_in_kpa(acquisition: Acquisition, share: float) -> Injected:
     """Write the pressure of a ``share`` of the runs in kPa, declared as mmHg."""
-    return in_some(acquisition, share, PRESSURE, lambda _, values: values * KPA_PER_MMHG, "units")
+    return in_some(acquisition, share, PRESSURE, lambda _, values: values * KPA_PER_MMHG, "pressure-units")
 
 
 def pressure_sent_in_cmh2o(acquisition: Acquisition, share: float) -> Injected:
     """Write the pressure of a ``share`` of the runs in cmH2O, declared as mmHg."""
-    return in_some(acquisition, share, PRESSURE, lambda _, values: values * CMH2O_PER_MMHG, "units")
+    return in_some(acquisition, share, PRESSURE, lambda _, values: values * CMH2O_PER_MMHG, "pressure-units")
 
 
 def volume_sent_in_litres(acquisition: Acquisition, share: float) -> Injected:
     """Write the volume of a ``share`` of the runs in L, declared as mL."""
-    return in_some(acquisition, share, VOLUME, lambda _, values: values / 1000.0, "units")
+    return in_some(acquisition, share, VOLUME, lambda _, values: values / 1000.0, "volume-units")
 
 
 def channels_swapped(acquisition: Acquisition, share: float) -> Injected:
@@ -80,12 +80,12 @@ def channels_swapped(acquisition: Acquisition, share: float) -> Injected:
 
 def pressure_inverted(acquisition: Acquisition, share: float) -> Injected:
     """Write the pressure of a ``share`` of the runs with the wrong sign."""
-    return in_some(acquisition, share, PRESSURE, lambda _, values: -values, "inverted-channel")
+    return in_some(acquisition, share, PRESSURE, lambda _, values: -values, "pressure-inverted")
 
 
 def volume_inverted(acquisition: Acquisition, share: float) -> Injected:
     """Turn the volume of a ``share`` of the runs upside down about its mean: it rises while the ventricle empties."""
-    return in_some(acquisition, share, VOLUME, lambda _, values: 2.0 * float(np.nanmean(values)) - values, "inverted-channel")
+    return in_some(acquisition, share, VOLUME, lambda _, values: 2.0 * float(np.nanmean(values)) - values, "volume-inverted")
 
 
 def clock_stretched(acquisition: Acquisition, factor: float) -> Injected:
@@ -103,12 +103,12 @@ def clock_stretched(acquisition: Acquisition, factor: float) -> Injected:
 
 def pressure_gone(acquisition: Acquisition, share: float) -> Injected:
     """Let the pressure stand still for the last ``share`` of every run."""
-    return injected(acquisition, PRESSURE, lambda _, values: _stopped(values, share), "flat-channel")
+    return injected(acquisition, PRESSURE, lambda _, values: _stopped(values, share), "pressure-flat")
 
 
 def volume_gone(acquisition: Acquisition, share: float) -> Injected:
     """Let the volume stand still for the last ``share`` of every run."""
-    return injected(acquisition, VOLUME, lambda _, values: _stopped(values, share), "flat-channel")
+    return injected(acquisition, VOLUME, lambda _, values: _stopped(values, share), "volume-flat")
 
 
 def _stopped(values: FloatArray, share: float) -> FloatArray:
@@ -123,12 +123,12 @@ def pressure_dropped_out(acquisition: Acquisition, share: float) -> Injected:
 
 def pressure_held(acquisition: Acquisition, share: float) -> Injected:
     """Repeat the last good pressure in pieces, one every few seconds, a ``share`` of all samples."""
-    return injected(acquisition, PRESSURE, lambda run, values: _held(values, pieces(acquisition, run, share)), "dropout")
+    return injected(acquisition, PRESSURE, lambda run, values: _held(values, pieces(acquisition, run, share)), "pressure-dropout")
 
 
 def volume_held(acquisition: Acquisition, share: float) -> Injected:
     """Repeat the last good volume in pieces, one every few seconds, a ``share`` of all samples."""
-    return injected(acquisition, VOLUME, lambda run, values: _held(values, pieces(acquisition, run, share)), "dropout")
+    return injected(acquisition, VOLUME, lambda run, values: _held(values, pieces(acquisition, run, share)), "volume-dropout")
 
 
 def _held(values: FloatArray, lost: FloatArray) -> FloatArray:
@@ -163,12 +163,12 @@ def _on_steps(values: FloatArray, step: float) -> FloatArray:
 
 def pressure_step(acquisition: Acquisition, mmhg: float) -> Injected:
     """Let the pressure jump by ``mmhg`` in the middle of every run, and stay."""
-    return injected(acquisition, PRESSURE, lambda _, values: values + mmhg * _later_half(values), "sensor-step")
+    return injected(acquisition, PRESSURE, lambda _, values: values + mmhg * _later_half(values), "pressure-step")
 
 
 def volume_step(acquisition: Acquisition, ml: float) -> Injected:
     """Let the volume jump by ``ml`` in the middle of every run, and stay."""
-    return injected(acquisition, VOLUME, lambda _, values: values + ml * _later_half(values), "sensor-step")
+    return injected(acquisition, VOLUME, lambda _, values: values + ml * _later_half(values), "volume-step")
 
 
 def _later_half(values: FloatArray) -> FloatArray:
