@@ -107,6 +107,16 @@ PRELOAD_SLOPES = frozenset(
         "efficiency",
     ]
 )
+PRESSURE_MOVED = PRESSURE_OFFSET | frozenset({"Ees", "EDPVR_beta"})
+"""A pressure that jumps or drifts inside a run: also what is a slope of pressure against volume. The loops' areas, and PRSW with them,
+move by less than 2 % at 5 mmHg (computed on simulated hearts)."""
+
+VOLUME_MOVED = VOLUME_OFFSET | frozenset(
+    ["Ees", "Ees_Ea", "PRSW", "dPdt_max_EDV", "EDPVR_beta", "EDPVR_stiffness", "PVA", "PE", "efficiency"]
+)
+"""A volume that jumps or drifts inside a run: also every slope against volume. Stroke volume and stroke work are differences within
+beats and move by less than 2 % at 10 mL (computed on simulated hearts)."""
+
 PRESSURE_SHAPE = PRESSURE_GAIN | PRESSURE_OFFSET | frozenset({"tau"})
 VOLUME_SHAPE = VOLUME_GAIN | VOLUME_OFFSET | frozenset({"Ees_Ea", "PRSW", "efficiency"})
 EVERYTHING = PRESSURE_SHAPE | VOLUME_SHAPE | TIME_SCALE | PRELOAD_SLOPES

@@ -7,12 +7,14 @@ from functools import cached_property
 
 import numpy as np
 
-from metrics.arrays import BoolArray, FloatArray, IntArray
+from metrics.arrays import BoolArray, FloatArray, IntArray, running_median
+from metrics.indices.end_systole import end_systole
 from metrics.signals.beats import Beats
 from metrics.signals.calibrate import Signals
 from metrics.signals.facts import AcquisitionFacts, PressureCalibration, RunFacts
-from metrics.signals.preload import PreloadWindow, preload_window
+from metrics.signals.preload import PreloadWindow, is_at_usual_rate, preload_window
 from metrics.signals.recording import Channel, Recording
+from metrics.signals.shifts import Course, LoadPoints, course
 
 REGURGITATION = frozenset({"mitral-regurgitation", "tricuspid-regurgitation", "aortic-regurgitation", "shunt"})
 """Conditions under which forward stroke volume differs from the ventricle's own."""
@@ -39,6 +41,30 @@ class RunSubject:
         if self.beats is None or self.signals is None or self.facts.kind != "preload-reduction":
             return None
         return preload_window(self.beats, self.facts, self.signals.sampling_rate_hz)
+
+    @cached_property
+    def course(self) -> Course:
+        """Return what moved in the sensors during the run, by its accepted beats.
+
+        Of a preload-reduction run those before the window and in it, and those after it at the heart rate there was before.
+        """
+        beats, signals = self.known_beats(), self.known_signals()
+        end_systolic = end_systole(signals, beats, None)
+        points = LoadPoints(self.start_s(), beats.edv_ml, beats.edp_mmhg, end_systolic.volume_ml, end_systolic.esp_mmhg)
+        known = np.isfinite(points.edv_ml + points.edp_mmhg + points.esv_ml + points.esp_mmhg)
+        chosen = known if self.accepted is None else known & self.accepted
+        if self.window is not None:
+            chosen = chosen & ((np.arange(len(beats)) <= self.window.last_at) | is_at_usual_rate(beats, self.window.onset_at, self.facts))
+        return course(points.at(np.flatnonzero(chosen)), bent=self.facts.kind == "preload-reduction")
+
+    def volume_at_stake_ml(self) -> float:
+        """Return against what a shift of volume is held: the accepted beats' range of ESV in the window, or else their median EDV."""
+        beats = self.known_beats()
+        chosen = np.ones(len(beats), dtype=bool) if self.accepted is None else self.accepted
+        if self.window is not None:
+            esv_ml = running_median(beats.esv_ml[chosen & self.window.inside], 3)
+            return float(np.ptp(esv_ml)) if esv_ml.size > 1 else float("nan")
+        return float(np.nanmedian(beats.edv_ml[chosen])) if chosen.any() else float("nan")
 
     @property
     def in_window(self) -> BoolArray:

@@ -90,12 +90,17 @@ def _deflated(beats: Beats, offs: list[float], onset: int, nadir: int) -> tuple[
     return nadir, "nadir"
 
 
-def _first_reflex_beat(beats: Beats, onset: int, facts: RunFacts) -> int | None:
-    """Return the first beat whose heart rate left the band around its value before the onset, None where that cannot be told."""
+def is_at_usual_rate(beats: Beats, onset: int, facts: RunFacts) -> BoolArray:
+    """Return which beats come within 10 % of the rate before the onset, shape (n_beats,); all where that cannot be told."""
     if facts.rhythm == "atrial-fibrillation":
-        return None
+        return np.ones(len(beats), dtype=bool)
     before = beats.rr_s[max(0, onset - 2 * MEDIAN_BEATS) : onset + 1]
     usual_s = float(np.nanmedian(before)) if np.isfinite(before).any() else float("nan")
     rate_change = usual_s / running_median(beats.rr_s, MEDIAN_BEATS) - 1.0
-    out = np.flatnonzero(np.abs(rate_change[onset + 1 :]) > REFLEX_SHARE)
+    return np.asarray(~(np.abs(rate_change) > REFLEX_SHARE), dtype=bool)
+
+
+def _first_reflex_beat(beats: Beats, onset: int, facts: RunFacts) -> int | None:
+    """Return the first beat whose heart rate left the band around its value before the onset, None where that cannot be told."""
+    out = np.flatnonzero(~is_at_usual_rate(beats, onset, facts)[onset + 1 :])
     return None if out.size == 0 else onset + 1 + int(out[0])

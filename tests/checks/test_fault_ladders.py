@@ -12,6 +12,7 @@ GRADE = {Verdict.PASS: 0, Verdict.NOT_EVALUATED: 0, Verdict.SUSPECT: 1, Verdict.
 RANGES = {check.name for check in ALL if check.name.startswith("range-")}
 WIRING = {"pressure-units", "volume-units", "swapped-channels", "pressure-inverted", "volume-inverted", "loop-direction"}
 STANDSTILL = {"pressure-flat", "volume-flat", "pressure-dropout", "volume-dropout"}
+COURSE = {"pressure-step", "volume-step", "pressure-drift", "volume-drift"}
 GROSS = {"samples-scattered": Verdict.SUSPECT}
 """How the grossest fault of a ladder is judged where that is no fail: a fifth of the samples may go, beat by beat."""
 
@@ -19,7 +20,7 @@ ALSO_FOUND = {
     "samples-scattered": {"missing-samples"},
     "flat-line": {"loop-closure"} | RANGES,
     "premature-beats": {"loop-closure"},
-    "volume-clipped": {"reference-stroke-volume", "reference-volumes"},
+    "volume-clipped": {"reference-stroke-volume", "reference-volumes", "pressure-drift"},
     "pressure-in-kpa": RANGES | {"preload-beats", "pressure-units"},
     "volume-times": RANGES | {"preload-beats", "volume-units", "reference-stroke-volume", "reference-volumes"},
 }
@@ -31,6 +32,7 @@ ELSEWHERE = {
     "preload-beats": "ever fewer beats are accepted, tests/checks/run/test_preload.py",
     **dict.fromkeys(WIRING, "wired wrongly in some runs, tests/checks/run/test_wiring_and_units.py"),
     **dict.fromkeys(STANDSTILL, "ever more of a run stands still, tests/checks/run/test_standstill.py"),
+    **dict.fromkeys(COURSE, "sensors move in the course of a run, tests/checks/run/test_course_ladders.py"),
     **dict.fromkeys(RANGES, "drawn beats run away, tests/checks/beat/test_landmarks_and_ranges.py"),
 }
 """Checks whose ladder no simulated fault climbs, and where it stands."""

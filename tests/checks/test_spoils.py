@@ -165,6 +165,10 @@ EXPECTED = {
     "volume-dropout": spoils.VOLUME_SHAPE,
     "preload-adequacy": spoils.PRELOAD_SLOPES,
     "preload-beats": spoils.PRELOAD_SLOPES,
+    "pressure-step": spoils.PRESSURE_MOVED,
+    "volume-step": spoils.VOLUME_MOVED,
+    "pressure-drift": spoils.PRESSURE_MOVED,
+    "volume-drift": spoils.VOLUME_MOVED,
 }
 
 
