@@ -46,7 +46,7 @@ EVIDENCE_TAKEN = {"zero-missing", "points-missing"}
 """Faults that take away what would tell how large they are: withholding is right at each severity for what the grossest reaches."""
 LOOKS_LIKE = {"reference-gain-wrong": "alpha-wrong", "reference-offset-wrong": "alpha-vc-wrong", "saline-disagrees": "alpha-vc-wrong"}
 """Faults of a witness, and the fault of the volumes that contradicts it in the same way: withholding is right for what that reaches."""
-DISTRUSTED = {"zero-drift", "offset-shown", "gain-shown"}
+DISTRUSTED = {"zero-drift", "offset-shown", "rezeroed-silently", "gain-shown"}
 """Faults the evidence undoes up to a bound: a sensor further off is not believed after correction either, which costs sound indices."""
 
 RIGHT, WRONG = "published right", "published wrong"

@@ -1,6 +1,6 @@
 """How faults of whole runs and acquisitions fare: is what they move withheld, the rest published, and the right check named?
 
-``python tests/bench/detection_runs.py`` assesses every fault of `ACQUISITION_LADDERS` and `RUN_LADDERS` at its six severities, each in a
+``python -m tests.bench.detection_runs`` assesses every fault of `ACQUISITION_LADDERS` and `RUN_LADDERS` at its six severities, each in a
 few of 12 hearts x 250 and 1000 Hz in turn, beside the same acquisition without the fault, and then sound acquisitions. It prints totals
 and the worst offenders, writes a table and a picture, and leaves with 1 when a target is missed. ``--full`` takes every heart and rate.
 
@@ -37,6 +37,7 @@ from tests.bench.detection_cases import (
     Case,
     Clean,
     Examined,
+    Outcome,
     clean_ones,
     examined,
 )
@@ -51,7 +52,7 @@ PAIRS = 2
 PUBLISHED_RIGHT = 0.95
 NAMED = 0.95
 SUSPECT = 0.01
-WORST = 60
+WORST = 100
 
 
 @dataclass(frozen=True, slots=True)
@@ -147,25 +148,27 @@ def table(found: Iterable[Examined]) -> list[list[str]]:
 
 
 def offenders(found: Sequence[Examined], kind: str) -> list[str]:
-    """Return who is behind outcomes of one kind, most first: fault, severity, index, how often of how many, largest shift, checks."""
-    counts: Counter[tuple[str, str, float, str]] = Counter()
-    tries: Counter[tuple[str, str, float, str]] = Counter()
-    blamed: dict[tuple[str, str, float, str], Counter[str]] = {}
-    worst: dict[tuple[str, str, float, str], float] = {}
+    """Return who is behind outcomes of one kind, most first: fault, severity, indices with counts, largest shift, failed checks."""
+    groups: dict[tuple[str, str, float], list[Outcome]] = {}
+    names: dict[tuple[str, str, float], Counter[str]] = {}
+    tries: Counter[tuple[str, str, float]] = Counter()
     for one in found:
-        for told in one.outcomes:
-            key = (one.case.level, one.case.fault, one.case.severity, told.index)
-            tries[key] += 1
-            if told.kind == kind:
-                counts[key] += 1
-                blamed.setdefault(key, Counter()).update(told.blamed or (one.failed | one.suspect if kind == WRONG else ()))
-                worst[key] = max(worst.get(key, 0.0), abs(told.value - told.sound) / max(abs(told.sound), 1e-9))
+        key = (one.case.level, one.case.fault, one.case.severity)
+        told = [outcome for outcome in one.outcomes if outcome.kind == kind]
+        tries[key] += 1
+        if told:
+            groups.setdefault(key, []).extend(told)
+            own = {name for outcome in told for name in outcome.blamed} or (one.failed | one.suspect if kind == WRONG else set())
+            names.setdefault(key, Counter()).update(own)
     lines = []
-    for key, count in sorted(counts.items(), key=lambda item: (-item[1] / tries[item[0]], -item[1], item[0])):
-        level, fault, severity, index = key
-        names = ", ".join(f"{name} {times}" for name, times in blamed[key].most_common(4))
-        by = f"  by {worst[key]:>7.0%}" if kind == WRONG else ""
-        lines.append(f"{level:<12}{fault:<28}{severity:>8g}  {index:<10}{count:>4} of {tries[key]:<4}{by}  {names}")
+    for key, told in sorted(groups.items(), key=lambda item: (-len(item[1]), item[0])):
+        level, fault, severity = key
+        indices = Counter(outcome.index for outcome in told).most_common()
+        shift = max(abs(outcome.value - outcome.sound) / max(abs(outcome.sound), 1e-9) for outcome in told)
+        by = f" by up to {shift:.0%}" if kind == WRONG else ""
+        checks = ", ".join(f"{name} {times}" for name, times in names[key].most_common(4)) or "no check"
+        told_of = ", ".join(f"{index} {times}" for index, times in indices)
+        lines.append(f"{len(told):>4}  {level} {fault} {severity:g}, {tries[key]} cases: {told_of}{by}  [{checks}]")
     return lines
 
 
@@ -237,7 +240,7 @@ def report(found: Sequence[Examined], clean: Sequence[Clean]) -> list[str]:
     ]
     for kind in (WRONG, NEEDLESSLY):
         told = offenders(found, kind)
-        lines += ["", f"-- {kind}: {len(told)} combinations, the worst first", *told[:WORST]]
+        lines += ["", f"-- {kind}: {len(told)} faults and severities, the worst first", *told[:WORST]]
     sections = (("right check not named", unnamed(found)), ("sound acquisitions", cries(clean)), ("fault by fault", by_fault(found)))
     for title, told in sections:
         lines += ["", f"-- {title}", *told]

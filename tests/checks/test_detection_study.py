@@ -87,7 +87,7 @@ def test_no_target_is_missed_where_all_is_well():
 def test_what_is_missed_is_told_with_fault_severity_and_index():
     found = [case_of(WRONG), case_of(RIGHT), case_of(NEEDLESSLY, failed=("noise",))]
     (told,) = offenders(found, WRONG)
-    assert told.split()[:6] == ["run", "pressure-step", "10", "SV", "1", "of"]
+    assert told.split() == ["1", "run", "pressure-step", "10,", "3", "cases:", "SV", "1", "by", "up", "to", "17%", "[no", "check]"]
     assert unnamed(found)[0].endswith("named: nothing")
     assert len(table(found)) == 4
 
