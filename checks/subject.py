@@ -2,7 +2,8 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from collections.abc import Mapping
+from dataclasses import dataclass, field
 from functools import cached_property
 
 import numpy as np
@@ -110,10 +111,11 @@ class RunSubject:
 
 @dataclass(frozen=True)
 class AcquisitionSubject:
-    """One acquisition with its runs, after the beats of each run were judged."""
+    """One acquisition with its runs, after these were judged; ``spoiled`` holds the indices that failed checks of a run reach, by run."""
 
     facts: AcquisitionFacts
     runs: tuple[RunSubject, ...] = ()
+    spoiled: Mapping[str, frozenset[str]] = field(default_factory=dict)
 
     def pressure_calibrations(self) -> tuple[PressureCalibration, ...]:
         """Return the pressure calibration of each run, or the acquisition's own where there are no runs."""

@@ -65,6 +65,11 @@ class RunVerdict:
         return tuple(j.check for j in self.judged if j.check.level is Level.RUN and j.worst() is Verdict.FAIL)
 
     @property
+    def spoiled(self) -> frozenset[str]:
+        """Return the indices the failed run checks reach."""
+        return frozenset().union(*(check.spoils for check in self.failed))
+
+    @property
     def is_usable(self) -> bool:
         """Return whether the run can still carry an index."""
         return not any(check.spoils >= EVERYTHING for check in self.failed)

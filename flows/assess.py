@@ -55,7 +55,7 @@ def assess(files: Mapping[str, Path], manifest: Manifest, protocol: Protocol) ->
         raise InputError(problem, file=MANIFEST_NAME, field="runs", remedy="Correct the files and send the package again.")
     runs = [judge_run(subject, CHECKS, rules) for subject in subjects]
     facts = acquisition_facts(manifest, protocol)
-    whole = AcquisitionSubject(facts, tuple(run.subject for run in runs))
+    whole = AcquisitionSubject(facts, tuple(run.subject for run in runs), {run.subject.facts.run: run.spoiled for run in runs})
     judged, findings = judge_acquisition(whole, CHECKS, rules)
     failed = tuple(finding.check for finding in findings if finding.decisive)
     reasons = {finding.check.name: finding.reason for finding in findings}

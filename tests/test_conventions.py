@@ -33,8 +33,8 @@ CONTRACT = frozenset(IN_THE_CONTRACT.split(", "))
 """The indices of the contract: a published index, and one that a fault spoils, has its name from here."""
 
 IN_UCUM = (
-    "1, s, ms, Hz, /min, /mL, mL, mL/m2, L/min, L/min/m2, mm[Hg], mm[Hg]/s, mm[Hg]/mL, mm[Hg].m2/mL, mm[Hg].mL, mm[Hg]/s/mL, mm[Hg].mL/s, "
-    "mm[Hg]/mL/s, W, mW, W/mL2, mW/mL2"
+    "1, s, ms, h, Hz, /min, /mL, mL, mL/m2, L/min, L/min/m2, mm[Hg], mm[Hg]/s, mm[Hg]/mL, mm[Hg].m2/mL, mm[Hg].mL, mm[Hg]/s/mL, "
+    "mm[Hg].mL/s, mm[Hg]/mL/s, W, mW, W/mL2, mW/mL2"
 )
 UCUM = frozenset(IN_UCUM.split(", "))
 FAMILIES = {

@@ -46,7 +46,8 @@ def judged(acquisition, rules=OWN_LIMITS):
     """The verdicts on each run by name, and what the acquisition checks found."""
     manifest = manifest_of(acquisition)
     runs = {run.run: judged_run(_run(acquisition, manifest, run), rules) for run in manifest.runs}
-    subject = AcquisitionSubject(acquisition_facts(manifest, PROTOCOL), tuple(verdict.subject for verdict in runs.values()))
+    spoiled = {name: verdict.spoiled for name, verdict in runs.items()}
+    subject = AcquisitionSubject(acquisition_facts(manifest, PROTOCOL), tuple(verdict.subject for verdict in runs.values()), spoiled)
     found, findings = judge_acquisition(subject, ALL, rules)
     return runs, found, findings
 
@@ -58,10 +59,13 @@ def _run(acquisition, manifest, run):
         return RunSubject(facts, None, trouble=f"{run.file}: there is no such column")
     stamps = columns[TIME] - columns[TIME][0] if run.channels.time is not None else None
     channels = {
-        name: Channel(columns[signal.column], UNITS[name], run.sampling_rate_hz, stamps, signal.delay_ms / 1000.0)
+        name: Channel(
+            columns[signal.column], "mS" if signal.unit == "mS" else UNITS[name], run.sampling_rate_hz, stamps, signal.delay_ms / 1000.0
+        )
         for name, signal in signals.items()
     }
-    return prepared(Recording(run.run, channels), facts)
+    recording = Recording(run.run, channels)
+    return RunSubject(facts, recording) if facts.kind == "saline" else prepared(recording, facts)
 
 
 def solving_once(patch):

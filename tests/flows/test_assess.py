@@ -282,7 +282,7 @@ def test_a_saline_run_is_listed_and_calibrates_instead_of_being_judged(tmp_path,
         saline = {"run": "saline-1", "kind": "saline", "file": "saline-1.csv", "sampling_rate_hz": 250.0, "channels": volume}
         manifest["runs"].append(saline)
 
-    columns = {**sound.columns, "saline-1": {VOLUME: sound.columns["rest"][VOLUME][:500]}}
+    columns = {**sound.columns, "saline-1": {VOLUME: sound.columns["rest"][VOLUME][499::-1]}}
     with_saline = replace(declaring(sound, change), columns=columns)
     found = assessed(tmp_path / "package", with_saline)
     assert found.acquisition["verdict"] == "accepted"

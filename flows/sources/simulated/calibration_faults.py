@@ -92,7 +92,7 @@ def alpha_wrong(acquisition: Acquisition, excess: float) -> Injected:
     def change(volume: Facts) -> None:
         volume["alpha"] = round(volume["alpha"] * (1.0 + excess), 4)
 
-    return Injected(with_facts(acquisition, volume_facts(change)), (Expected("reference-stroke-volume"),))
+    return Injected(with_facts(acquisition, volume_facts(change)), (Expected("reference-stroke-volume"), Expected("alpha-plausible")))
 
 
 def alpha_vc_wrong(acquisition: Acquisition, ml: float) -> Injected:
@@ -110,7 +110,8 @@ def alpha_vc_sign_wrong(acquisition: Acquisition, share: float) -> Injected:
     def change(volume: Facts) -> None:
         volume["alpha_vc_ml"] = round(volume["alpha_vc_ml"] * (1.0 - 2.0 * share), 2)
 
-    return Injected(with_facts(acquisition, volume_facts(change)), (Expected("reference-volumes"), Expected("saline-agreement")))
+    expected = (Expected("reference-volumes"), Expected("saline-agreement"), Expected("alpha-vc-plausible"))
+    return Injected(with_facts(acquisition, volume_facts(change)), expected)
 
 
 def calibration_stale(acquisition: Acquisition, hours: float) -> Injected:

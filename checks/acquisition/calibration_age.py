@@ -1,0 +1,39 @@
+"""Calibration age: gain and parallel volume belong to one placement of one catheter in one state of the blood.
+
+Both change with position, haematocrit and temperature (Baan 1984, Circulation 70:812, read in abstract, has both constant only within a
+study). A calibration of the same session is hours old at most; one of another day was made with another placement. An instant after the
+run counts like one before it.
+"""
+
+from __future__ import annotations
+
+import numpy as np
+
+from checks.check import Check, Level, Limits, Measured, single
+from checks.spoils import VOLUME_GAIN, VOLUME_OFFSET
+from checks.subject import AcquisitionSubject
+
+
+def calibration_age_hours(subject: AcquisitionSubject) -> Measured:
+    """Return the longest time between a raw run and its volume calibration, hours, shape (); NaN without both clocks.
+
+    >>> from metrics.signals.facts import AcquisitionFacts
+    >>> float(calibration_age_hours(AcquisitionSubject(AcquisitionFacts())).value)
+    nan
+    """
+    used = [run.facts.volume for run in subject.runs if run.facts.kind != "saline" and not run.facts.volume.calibrated]
+    ages = [abs(volume.age_hours) for volume in used if volume.age_hours is not None]
+    return single(max(ages) if ages else np.nan)
+
+
+CHECK = Check(
+    name="calibration-age",
+    title="Volume calibration is of the session",
+    level=Level.ACQUISITION,
+    measure=calibration_age_hours,
+    unit="h",
+    limits=Limits(suspect_above=4.0, fail_above=12.0, basis="house default; one catheterisation lasts hours, not days"),
+    reason="the volume calibration lies {value:.1f} hours from a run that uses it (limit {limit:g} h)",
+    remedy="calibrate in the same session and send calibration.volume.at, or confirm the date",
+    spoils=VOLUME_GAIN | VOLUME_OFFSET,
+)

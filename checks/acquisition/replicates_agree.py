@@ -1,0 +1,76 @@
+"""Replicates: occlusions of one stage and one manoeuvre measure one slope.
+
+Two sound occlusions differ by their standard errors: with 10 % each, a limit of 15 % on the coefficient of variation alone fails 13 % of
+sound pairs (computed). So a pair counts only where its slopes lie more than 2.6 combined standard errors apart (1 in 100 by chance).
+Mean and spread of two or three occlusions, within 15 %, are customary (from memory). A run whose slope a check of its own already spoils
+is left out: it bears no index.
+"""
+
+from __future__ import annotations
+
+from itertools import combinations
+
+import numpy as np
+
+from checks.check import Check, Level, Limits, Measured, single
+from checks.spoils import PRELOAD_SLOPES
+from checks.subject import AcquisitionSubject, RunSubject
+from metrics.indices.card import RunBeats
+from metrics.stats.lines import Line
+
+APART = 2.6
+FEWEST_BEATS = 5
+
+
+def pair_variation(first: tuple[float, float], second: tuple[float, float]) -> float:
+    """Return the coefficient of variation of two (slope, standard error); 0 where they differ by chance.
+
+    >>> round(pair_variation((2.0, 0.1), (3.0, 0.1)), 3)
+    0.283
+    >>> pair_variation((2.0, 0.3), (3.0, 0.3))
+    0.0
+    """
+    difference = abs(first[0] - second[0])
+    if difference <= APART * float(np.hypot(first[1], second[1])):
+        return 0.0
+    return difference / float(np.sqrt(2.0)) / abs(0.5 * (first[0] + second[0]))
+
+
+def replicate_variation(subject: AcquisitionSubject) -> Measured:
+    """Return the largest coefficient of variation of Ees of a pair of replicates that differ, 0 where none does, shape ().
+
+    NaN without two runs of one stage and manoeuvre that carry a slope.
+    """
+    slopes: dict[tuple[str | None, str | None], list[tuple[float, float]]] = {}
+    for run in subject.runs:
+        line = None if "Ees" in subject.spoiled.get(run.facts.run, frozenset()) else _line(run)
+        if line is not None and line.slope > 0.0 and line.fieller_g < 1.0:
+            slopes.setdefault((run.facts.stage, run.facts.manoeuvre), []).append((line.slope, line.slope_se))
+    found = [pair_variation(*pair) for group in slopes.values() for pair in combinations(group, 2)]
+    return single(max(found) if found else np.nan)
+
+
+def _line(run: RunSubject) -> Line | None:
+    """Return the end-systolic line of a preload-reduction run, None where its beats carry none."""
+    if run.facts.kind != "preload-reduction" or run.beats is None or run.signals is None or run.accepted is None:
+        return None
+    chosen = run.accepted & run.in_window
+    if int(chosen.sum()) < FEWEST_BEATS:
+        return None
+    try:
+        return RunBeats(run.facts.run, run.signals, run.beats, chosen, run.facts.manoeuvre).end_systolic_line.line
+    except ValueError:
+        return None
+
+
+CHECK = Check(
+    name="replicates-agree",
+    title="Replicate occlusions agree",
+    level=Level.ACQUISITION,
+    measure=replicate_variation,
+    unit="1",
+    limits=Limits(fail_above=0.15, basis="15 % is customary (from memory), beyond 2.6 combined standard errors"),
+    reason="two occlusions of one stage give slopes that vary by {value:.0%}, more than their uncertainty explains (limit {limit:.0%})",
+    remedy="look at both occlusions; say which one is sound, or whether the state changed between them",
+    spoils=PRELOAD_SLOPES,
+)
