@@ -13,6 +13,7 @@ from checks import ALL as CHECKS
 from checks.subject import AcquisitionSubject, RunSubject
 from checks.verdicts import Rules, judge_acquisition, judge_run
 from flows.assessed_rows import acquisition_row, beat_rows, measure_rows, rejection_rows, run_row
+from flows.channel_sums import channel_rows
 from flows.errors import InputError
 from flows.evidence import evidence_of
 from flows.facts import acquisition_facts, run_facts
@@ -30,7 +31,8 @@ Row = dict[str, object]
 class Assessment:
     """All that was found of one acquisition, as rows of the published tables (columns of the contract, missing = None).
 
-    ``measures`` holds every evaluated value, passes too; ``evidence`` is JSON-able and holds what pages draw.
+    ``measures`` holds every evaluated value, passes too; ``evidence`` is JSON-able and holds what pages draw; ``channels`` holds the sums
+    by which the same recording is known in another acquisition.
     """
 
     acquisition: Row
@@ -41,6 +43,7 @@ class Assessment:
     changes: list[Row] = field(default_factory=list)
     measures: list[Row] = field(default_factory=list)
     evidence: dict[str, object] = field(default_factory=dict)
+    channels: list[Row] = field(default_factory=list)
 
 
 def assess(files: Mapping[str, Path], manifest: Manifest, protocol: Protocol) -> Assessment:
@@ -75,6 +78,7 @@ def assess(files: Mapping[str, Path], manifest: Manifest, protocol: Protocol) ->
         indices=indices,
         measures=measure_rows(judged, runs, manifest),
         evidence=evidence_of(manifest, runs, findings, run_rows, beats, indices),
+        channels=channel_rows(subjects, manifest.site, manifest.acquisition),
     )
 
 

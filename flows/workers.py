@@ -32,7 +32,7 @@ if TYPE_CHECKING:
 TIME_OUT_S = 120.0
 """What one package may take; a large one takes some seconds. House default."""
 
-TABLES = ("runs", "beats", "rejections", "indices", "changes", "measures")
+TABLES = ("runs", "beats", "rejections", "indices", "changes", "measures", "channels")
 _ONE_THREAD = ("OMP_NUM_THREADS", "OPENBLAS_NUM_THREADS", "MKL_NUM_THREADS")
 
 

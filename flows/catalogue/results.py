@@ -177,5 +177,15 @@ class MeasureRow(_Listed, _Named, Base):
     revision: Mapped[int]
 
 
-LISTED = (RunRow, BeatRow, RejectionRow, IndexRow, ChangeRow, MeasureRow)
+class ChannelRow(_Listed, _Named, Base):
+    """The sum of a recorded channel's content: by it the same recording is known under another name."""
+
+    __tablename__ = "channels"
+
+    run: Mapped[str]
+    channel: Mapped[str]
+    sha256: Mapped[str] = mapped_column(HASH)
+
+
+LISTED = (RunRow, BeatRow, RejectionRow, IndexRow, ChangeRow, MeasureRow, ChannelRow)
 """The tables an assessment fills with lists of rows, parents first."""

@@ -12,6 +12,7 @@ from typing import TYPE_CHECKING, Any
 from checks import ALL as CHECKS
 from flows.catalogue import evidence_files, lookups, store
 from flows.catalogue.engine import reading, writing
+from flows.publish.copies import copies, with_copies_rejected, with_copy_told
 from flows.publish.gate import answers
 from flows.publish.refusal import GateRefused
 from flows.publish.release import UNNAMED, publish, seal, staged, write_tables
@@ -58,9 +59,10 @@ def publish_night(night: Night) -> NightResult:
     """
     with reading(night.engine) as session:
         columns = {table: lookups.columns(session, night.basis, table) for table in schemas()}
+        copied = copies(lookups.columns(session, night.basis, "channels"))
         outcomes = {str(row["key"]): row for row in lookups.outcomes(session, night.basis).values()}
     keys = dict(zip(columns["acquisitions"]["acquisition"], columns["acquisitions"]["key"], strict=True))
-    tables = build(columns)
+    tables = build(with_copies_rejected(columns, copied))
     found = answers(tables)
     problems = [answer.problem() for answer in found if not answer.kept]
     if problems:
@@ -68,7 +70,7 @@ def publish_night(night: Night) -> NightResult:
 
     def evidence(acquisition: str) -> Mapping[str, Any]:
         key = keys[acquisition]
-        return evidence_files.load(night.store, key, str(outcomes[key]["evidence_sha256"]))
+        return with_copy_told(evidence_files.load(night.store, key, str(outcomes[key]["evidence_sha256"])), copied.get(acquisition))
 
     shown = material(tables, night.protocol, CHECKS, found, night.basis.software_version)
     with staged(night.store) as folder:
