@@ -30,6 +30,9 @@ SIXTH_GAIN = float(np.sqrt(924.0))
 LEAST_NOISE_STEPS = 0.5
 """Rounding alone has a standard deviation of 0.29 of its step."""
 
+JUDGED_BY = 20_000
+"""Samples, from the middle, that show whether there is noise: more would only cost time."""
+
 PROBES = 5
 PROBE_SAMPLES = 24
 
@@ -41,6 +44,7 @@ def shows_noise(samples: FloatArray) -> bool:
     >>> shows_noise(wave), shows_noise(wave + 0.01 * np.random.default_rng(1).standard_normal(1000))
     (False, True)
     """
+    samples = samples[max(samples.size - JUDGED_BY, 0) // 2 :][:JUDGED_BY]
     third, sixth = robust_sd(np.diff(samples, 3)), robust_sd(np.diff(samples, 6))
     step = smallest_step(np.round(samples, 6))
     return bool(sixth > WHITE_GAIN * third and sixth / SIXTH_GAIN > LEAST_NOISE_STEPS * step)
@@ -80,7 +84,7 @@ def _exact_shifts(one: FloatArray, other: FloatArray) -> set[int]:
     shifts = set()
     for start in np.linspace(0, max(other.size - PROBE_SAMPLES, 0), PROBES + 2).astype(np.int64)[1:-1].tolist():
         piece = other[start : start + PROBE_SAMPLES]
-        places = np.arange(one.size - PROBE_SAMPLES)
+        places = np.flatnonzero(one[: max(one.size - PROBE_SAMPLES, 0)] == piece[0])
         for offset, value in enumerate(piece.tolist()):
             places = places[one[places + offset] == value]
         if places.size == 1:
