@@ -88,6 +88,18 @@ TIME_SCALE = frozenset(["HR", "CO", "CI", "dPdt_max", "dPdt_min", "tau", "PWRmax
 SLOW_PRESSURE = frozenset(["dPdt_max", "dPdt_min", "tau", "Pinf", "dPdt_max_EDV"])
 """What a fluid-filled line cannot carry: it must not feed dP/dt, tau or single-beat pressures; common practice, no source."""
 
+STEEPEST = SLOW_PRESSURE | frozenset({"PWRmax", "PWRmax_EDV2"})
+"""What is read where pressure is steepest: moved by whatever is fast and not the heart's."""
+
+END_DIASTOLE = frozenset(["EDP", "EDPVR_beta", "EDPVR_stiffness", "V20", "V30"])
+"""What is read from the pressure at end-diastole, a small pressure at an instant that dP/dt decides."""
+
+PRESSURE_EXTREMES = PRESSURE_OFFSET | END_DIASTOLE | frozenset({"Ees"})
+"""What is read from a pressure at one instant which an extreme or a threshold chooses: noise and hum choose with it."""
+
+ECG_LEAK = frozenset(["V0", "V100", "V120", "Vw", "PE", "PVA", "efficiency", "V20", "V30"])
+"""What stands on a volume's absolute place by a line's intercept: it moves by several times what leaks in at end-systole."""
+
 PRELOAD_SLOPES = frozenset(
     [
         "Ees",
@@ -116,6 +128,17 @@ VOLUME_MOVED = VOLUME_OFFSET | frozenset(
 )
 """A volume that jumps or drifts inside a run: also every slope against volume. Stroke volume and stroke work are differences within
 beats and move by less than 2 % at 10 mL (computed on simulated hearts)."""
+
+DELAY = frozenset(["SW", "PRSW", "Vw", "PVA", "PE", "efficiency"])
+"""Volume and pressure a few hundredths of a second apart: what is summed around the loop, and what is made of it."""
+
+LONG_DELAY = DELAY | VOLUME_GAIN | VOLUME_OFFSET | frozenset({"ESP", "Ees_Ea"})
+"""More than that: also every value of one channel that is read at a landmark of the other."""
+
+STEADY_STATE = frozenset(
+    ["EDV", "EDVI", "ESV", "ESVI", "SV", "SVI", "EF", "CO", "CI", "EDP", "ESP", "Pmax", "Ea", "EaI", "SW", "dPdt_max", "dPdt_min"]
+) | frozenset(["Ees_Ea", "PVA", "PE", "efficiency", "PWRmax", "PWRmax_EDV2"])
+"""A run that is not steady: all that is a median over it and depends on load."""
 
 PRESSURE_SHAPE = PRESSURE_GAIN | PRESSURE_OFFSET | frozenset({"tau"})
 VOLUME_SHAPE = VOLUME_GAIN | VOLUME_OFFSET | frozenset({"Ees_Ea", "PRSW", "efficiency"})

@@ -40,8 +40,7 @@ def is_broken_off(samples: FloatArray, first: IntArray, stop: IntArray) -> BoolA
     >>> is_broken_off(wave, np.array([1, 105]), np.array([5, 110])).tolist()
     [False, True]
     """
-    finite = samples[np.isfinite(samples)]
-    least = LEAST_JUMP * float(np.nan_to_num(span(finite)))
+    least = LEAST_JUMP * float(np.nan_to_num(span(samples)))
     entered = np.abs(samples[first] - samples[np.maximum(first - 1, 0)])
     left = np.abs(samples[np.minimum(stop, samples.size - 1)] - samples[stop - 1])
     at_edge = (first == 0) | (stop == samples.size)

@@ -21,14 +21,18 @@ MOST_SAMPLES = 60_000
 
 
 def span(samples: FloatArray) -> float:
-    """Return how far a signal moves, from its 2nd to its 98th percentile; NaN for one that stands still or is empty.
+    """Return how far a signal moves, from its 2nd to its 98th percentile, missing samples left out.
+
+    NaN for one that stands still or is empty.
 
     >>> span(np.arange(101.0)), span(np.ones(50))
     (96.0, nan)
     """
-    if samples.size == 0:
+    thinned = samples[:: max(1, samples.size // MOST_SAMPLES)]
+    thinned = thinned[np.isfinite(thinned)]
+    if thinned.size == 0:
         return float("nan")
-    low, high = np.percentile(samples[:: max(1, samples.size // MOST_SAMPLES)], EDGES_PERCENT)
+    low, high = np.percentile(thinned, EDGES_PERCENT)
     return float(high - low) if high > low else float("nan")
 
 

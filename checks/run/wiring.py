@@ -127,7 +127,7 @@ SWAPPED = Check(
     measure=direction_if_swapped,
     unit="1",
     limits=_LIMITS,
-    reason="loops run clockwise and the volume channel rises after the R wave as pressure should: the two channels are exchanged",
+    reason="loops run clockwise ({value:.2f}, limit {limit:g}) and volume rises after the R wave as pressure should: the two are exchanged",
     remedy="name the columns of pressure and volume the other way round and send the package again",
     spoils=EVERYTHING,
 )
@@ -138,7 +138,7 @@ PRESSURE_INVERTED = Check(
     measure=direction_if_pressure,
     unit="1",
     limits=_LIMITS,
-    reason="loops run clockwise and pressure falls when the ventricle contracts: pressure is upside down",
+    reason="loops run clockwise ({value:.2f}, limit {limit:g}) and pressure falls when the ventricle contracts: pressure is upside down",
     remedy="check the polarity of the pressure channel and export the run again",
     spoils=EVERYTHING,
 )
@@ -149,7 +149,7 @@ VOLUME_INVERTED = Check(
     measure=direction_if_volume,
     unit="1",
     limits=_LIMITS,
-    reason="loops run clockwise while pressure rises after the R wave: volume is upside down",
+    reason="loops run clockwise ({value:.2f}, limit {limit:g}) while pressure rises after the R wave: volume is upside down",
     remedy="check the polarity of the volume channel and export the run again",
     spoils=VOLUME_SHAPE,
 )
@@ -160,7 +160,7 @@ DIRECTION = Check(
     measure=direction_if_unknown,
     unit="1",
     limits=_LIMITS,
-    reason="loops run clockwise: pressure and volume are exchanged or one of them is upside down, and no R wave tells which",
+    reason="loops run clockwise ({value:.2f}, limit {limit:g}): two channels are exchanged or one is upside down, no R wave tells which",
     remedy="check the columns and the polarity of pressure and volume, and send the electrogram with them",
     spoils=EVERYTHING,
 )

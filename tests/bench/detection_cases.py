@@ -10,6 +10,7 @@ from __future__ import annotations
 import functools
 import json
 import math
+import os
 import tempfile
 from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass
@@ -17,9 +18,11 @@ from pathlib import Path
 from typing import Any
 
 from checks import ALL as CHECKS
+from checks.acquisition.copied_signal import CHECK as COPIED_SIGNAL
 from checks.check import Check, Level, Limits
 from flows.assess import Assessment, assess
 from flows.errors import InputError
+from flows.publish.copies import copies
 from flows.sources.simulated.acquisition import Acquisition
 from flows.sources.simulated.corpus import Shelf, clean_acquisition, clean_recipe, reached
 from flows.sources.simulated.heart import LEFT_HEARTS, RIGHT_HEARTS
@@ -46,6 +49,15 @@ EVIDENCE_TAKEN = {"zero-missing", "points-missing"}
 """Faults that take away what would tell how large they are: withholding is right at each severity for what the grossest reaches."""
 LOOKS_LIKE = {"reference-gain-wrong": "alpha-wrong", "reference-offset-wrong": "alpha-vc-wrong", "saline-disagrees": "alpha-vc-wrong"}
 """Faults of a witness, and the fault of the volumes that contradicts it in the same way: withholding is right for what that reaches."""
+SLOPES = frozenset({"Ees", "V0", "Ees_Ea", "PRSW"})
+COPIES = {
+    "run-copied": SLOPES,
+    "run-copied-with-new-noise": SLOPES,
+    "run-copied-with-new-ecg": SLOPES,
+    "rest-as-ramp": None,
+    "subject-swapped": None,
+}
+"""Faults by which a recording stands for two, and the indices that come from either (None: all): nobody can tell whose it is."""
 DISTRUSTED = {"zero-drift", "offset-shown", "rezeroed-silently", "gain-shown"}
 """Faults the evidence undoes up to a bound: a sensor further off is not believed after correction either, which costs sound indices."""
 
@@ -161,11 +173,14 @@ def examined(case: Case) -> Examined:
     injected = case.ladder.inject(acquisition, case.severity)
     true = true_indices(injected.acquisition) if injected.truth_is_its_own else truth
     found = _assessed(injected.acquisition)
-    published = _values(found)
+    is_copied = injected.other is not None and _is_sent_twice(found, _assessed(injected.other))
+    published = {} if is_copied else _values(found)
     unguarded: Mapping[tuple[str, str], _Published] = published
     if any(key not in published for key in twin):
         unguarded = _values(_assessed(injected.acquisition, guarded=False))
     failed, suspect = _named(found)
+    if is_copied:
+        failed, suspect = failed | {COPIED_SIGNAL.name}, suspect - {COPIED_SIGNAL.name}
     reach = {(one.stage, one.index): one for one in reached(acquisition, case.ladder, case.severity)}
     doubtful = _doubtful(case, acquisition, twin)
     names = frozenset(one.check for one in injected.expected)
@@ -194,10 +209,22 @@ def _is_right(index: str, value: float, sound: _Published, true: float) -> bool:
     return not moved(index, value, sound.value, sound.half) or not moved(index, value, true, sound.half)
 
 
+def _is_sent_twice(found: Assessment | None, other: Assessment | None) -> bool:
+    """Return whether a night that holds both acquisitions finds that they share a recording."""
+    if found is None or other is None:
+        return False
+    rows = [*found.channels, *other.channels]
+    columns = {name: [row[name] for row in rows] for name in ("acquisition", "run", "channel", "sha256")}
+    return found.acquisition["acquisition"] in copies(columns)
+
+
 def _doubtful(case: Case, acquisition: Acquisition, twin: Mapping[tuple[str, str], _Published]) -> set[tuple[str, str]]:
     """Return the indices nobody can tell to be sound, though they may be: the evidence is gone, or a witness contradicts them."""
     if case.fault in EVIDENCE_TAKEN:
         told = reached(acquisition, case.ladder, case.ladder.severities[-1])
+    elif case.fault in COPIES:
+        own = COPIES[case.fault]
+        return {key for key in twin if own is None or key[1] in own} if case.severity else set()
     elif case.fault in LOOKS_LIKE:
         told = reached(acquisition, LADDERS["acquisition", LOOKS_LIKE[case.fault]], case.severity)
     else:
@@ -216,11 +243,26 @@ def _twin(heart: str, rate_hz: float) -> dict[tuple[str, str], _Published]:
     return _values(_assessed(acquisition))
 
 
+def signal_folder() -> tempfile.TemporaryDirectory[str]:
+    """Return a folder for signal files that goes when it is closed, in memory where there is such a place."""
+    memory = Path("/dev/shm")  # noqa: S108  (a folder of our own in it, readable by nobody else)
+    return tempfile.TemporaryDirectory(prefix="detection-", dir=memory if memory.is_dir() else None)
+
+
+_FOLDERS: list[tempfile.TemporaryDirectory[str] | Path] = []
+
+
+def keep_signals_in(folder: str) -> None:
+    """Let this process write its signal files into a folder of its own within ``folder``."""
+    _FOLDERS.append(Path(folder) / str(os.getpid()))
+
+
 @functools.cache
 def _shelf() -> Shelf:
-    memory = Path("/dev/shm")  # noqa: S108  (files for this process alone; in memory where there is such a folder)
-    folder = tempfile.mkdtemp(prefix="detection-", dir=memory if memory.is_dir() else None)
-    return Shelf(Path(folder), most=24)
+    if not _FOLDERS:
+        _FOLDERS.append(signal_folder())
+    kept = _FOLDERS[0]
+    return Shelf(kept if isinstance(kept, Path) else Path(kept.name), most=24)
 
 
 def _assessed(acquisition: Acquisition, *, guarded: bool = True) -> Assessment | None:

@@ -40,6 +40,8 @@ from tests.bench.detection_cases import (
     Outcome,
     clean_ones,
     examined,
+    keep_signals_in,
+    signal_folder,
 )
 from tests.bench.detection_picture import picture
 
@@ -267,15 +269,22 @@ def measured(
     chunks = [own[start : start + 12] for own in grouped.values() for start in range(0, len(own), 12)]
     found: list[Examined] = []
     clean: list[Clean] = []
-    with ProcessPoolExecutor(workers, mp_context=get_context("spawn")) as pool:
+    with (
+        signal_folder() as folder,
+        ProcessPoolExecutor(workers, get_context("spawn"), initializer=keep_signals_in, initargs=(folder,)) as pool,
+    ):
         faulty = [pool.submit(_group, chunk) for chunk in chunks]
         healthy = [pool.submit(_clean_group, pair) for pair in sound]
-        for done in as_completed(faulty):
-            found += done.result()
-            tell(f"\r{len(found)} of {len(chosen)} faulty acquisitions      ")
-        for number, ready in enumerate(healthy, 1):
-            clean += ready.result()
-            tell(f"\r{number} of {len(sound)} sound hearts      ")
+        try:
+            for done in as_completed(faulty):
+                found += done.result()
+                tell(f"\r{len(found)} of {len(chosen)} faulty acquisitions      ")
+            for number, ready in enumerate(healthy, 1):
+                clean += ready.result()
+                tell(f"\r{number} of {len(sound)} sound hearts      ")
+        except BaseException:
+            pool.shutdown(cancel_futures=True)
+            raise
     tell("\n")
     return sorted(found, key=lambda one: order[one.case]), clean
 

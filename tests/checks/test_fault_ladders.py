@@ -1,5 +1,7 @@
 """Every simulated fault, from hardly noticeable to gross: found, never judged milder as it grows, and nothing else cries out."""
 
+import re
+
 import pytest
 
 from checks import ALL
@@ -14,16 +16,21 @@ RANGES = {check.name for check in ALL if check.name.startswith("range-")}
 WIRING = {"pressure-units", "volume-units", "swapped-channels", "pressure-inverted", "volume-inverted", "loop-direction"}
 STANDSTILL = {"pressure-flat", "volume-flat", "pressure-dropout", "volume-dropout"}
 COURSE = {"pressure-step", "volume-step", "pressure-drift", "volume-drift"}
+COURSE |= {"channel-delay", "channel-delay-gross", "steadiness", "respiration-as-declared", "rhythm-as-declared", "segment-phase"}
+QUIET = {check.name for check in ALL if re.search("hum|noise|quantisation|ringing|ecg-leak|beats-accepted", check.name)}
+COURSE = {"pressure-step", "volume-step", "pressure-drift", "volume-drift"}
 GROSS = {"samples-scattered": Verdict.SUSPECT}
 """How the grossest fault of a ladder is judged where that is no fail: a fifth of the samples may go, beat by beat."""
 
 ALSO_FOUND = {
+    "fluid-filled": {"ringing"},
     "samples-scattered": {"missing-samples"},
+    "fluid-filled": {"channel-delay", "channel-delay-gross"},
     "flat-line": {"loop-closure"} | RANGES,
     "premature-beats": {"loop-closure"},
-    "volume-clipped": {"reference-stroke-volume", "reference-volumes", "pressure-drift"},
-    "pressure-in-kpa": RANGES | {"preload-beats", "pressure-units"},
-    "volume-times": RANGES | {"preload-beats", "volume-units", "reference-stroke-volume", "reference-volumes"},
+    "volume-clipped": {"reference-stroke-volume", "reference-volumes", "pressure-drift", "channel-delay", "channel-delay-gross"},
+    "pressure-in-kpa": RANGES | {"preload-beats", "pressure-units", "beats-accepted"},
+    "volume-times": RANGES | {"preload-beats", "volume-units", "beats-accepted", "reference-stroke-volume", "reference-volumes"},
 }
 """What else a fault truly breaks beside the check it is made for."""
 
@@ -33,6 +40,8 @@ ELSEWHERE = {
     "preload-beats": "ever fewer beats are accepted, tests/checks/run/test_preload.py",
     **dict.fromkeys(WIRING, "wired wrongly in some runs, tests/checks/run/test_wiring_and_units.py"),
     **dict.fromkeys(STANDSTILL, "ever more of a run stands still, tests/checks/run/test_standstill.py"),
+    **dict.fromkeys(COURSE, "sensors move in the course of a run, tests/checks/run/test_course_ladders.py"),
+    **dict.fromkeys(QUIET, "ever louder or coarser, tests/checks/run/test_noise_and_hum.py"),
     **dict.fromkeys(COURSE, "sensors move in the course of a run, tests/checks/run/test_course_ladders.py"),
     **dict.fromkeys(RANGES, "drawn beats run away, tests/checks/beat/test_landmarks_and_ranges.py"),
 }

@@ -18,7 +18,7 @@ from flows.sources.simulated.run_faults import OFTEN_S, Change, changed, heart_r
 BURST_S = 0.3
 
 
-def hum(acquisition: Acquisition, amplitude: float, column: str, mains_hz: float) -> Injected:
+def hum(acquisition: Acquisition, amplitude: float, column: str, mains_hz: float, check: str) -> Injected:
     """Add the mains to a column, with a tenth of it at the third harmonic where the rate can hold that."""
 
     def change(run: str, values: FloatArray) -> FloatArray:
@@ -27,42 +27,42 @@ def hum(acquisition: Acquisition, amplitude: float, column: str, mains_hz: float
         third = 0.1 * np.sin(3.0 * phase) if 3.0 * mains_hz < 0.5 * rate_hz else 0.0
         return np.asarray(values + amplitude * (np.sin(phase) + third), dtype=np.float64)
 
-    return injected(acquisition, column, change, "hum")
+    return injected(acquisition, column, change, check)
 
 
 def pressure_hum_50(acquisition: Acquisition, mmhg: float) -> Injected:
     """Add ``mmhg`` of 50 Hz to the pressure."""
-    return hum(acquisition, mmhg, PRESSURE, 50.0)
+    return hum(acquisition, mmhg, PRESSURE, 50.0, "edp-hum")
 
 
 def pressure_hum_60(acquisition: Acquisition, mmhg: float) -> Injected:
     """Add ``mmhg`` of 60 Hz to the pressure."""
-    return hum(acquisition, mmhg, PRESSURE, 60.0)
+    return hum(acquisition, mmhg, PRESSURE, 60.0, "dpdt-hum")
 
 
 def volume_hum_50(acquisition: Acquisition, ml: float) -> Injected:
     """Add ``ml`` of 50 Hz to the volume."""
-    return hum(acquisition, ml, VOLUME, 50.0)
+    return hum(acquisition, ml, VOLUME, 50.0, "volume-hum")
 
 
 def ecg_hum_60(acquisition: Acquisition, mv: float) -> Injected:
-    """Add ``mv`` of 60 Hz to the ECG."""
-    return hum(acquisition, mv, ECG, 60.0)
+    """Add ``mv`` of 60 Hz to the ECG: R waves are found all the same, or beats by their pressure."""
+    return Injected(hum(acquisition, mv, ECG, 60.0, "").acquisition, ())
 
 
 def pressure_noisy(acquisition: Acquisition, sd_mmhg: float) -> Injected:
     """Add white noise to the pressure."""
-    return injected(acquisition, PRESSURE, _white(acquisition, sd_mmhg), "noise")
+    return injected(acquisition, PRESSURE, _white(acquisition, sd_mmhg), "dpdt-noise")
 
 
 def volume_noisy(acquisition: Acquisition, sd_ml: float) -> Injected:
     """Add white noise to the volume."""
-    return injected(acquisition, VOLUME, _white(acquisition, sd_ml), "noise")
+    return injected(acquisition, VOLUME, _white(acquisition, sd_ml), "volume-noise")
 
 
 def ecg_noisy(acquisition: Acquisition, sd_mv: float) -> Injected:
-    """Add white noise to the ECG."""
-    return injected(acquisition, ECG, _white(acquisition, sd_mv), "noise")
+    """Add white noise to the ECG: R waves are found all the same, or beats by their pressure."""
+    return Injected(changed(acquisition, ECG, _white(acquisition, sd_mv)), ())
 
 
 def _white(acquisition: Acquisition, sd: float) -> Change:

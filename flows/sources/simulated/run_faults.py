@@ -149,12 +149,12 @@ def pieces(acquisition: Acquisition, run: str, share: float) -> FloatArray:
 
 def pressure_coarse(acquisition: Acquisition, step_mmhg: float) -> Injected:
     """Write the pressure in steps of ``step_mmhg``."""
-    return injected(acquisition, PRESSURE, lambda _, values: _on_steps(values, step_mmhg), "quantisation")
+    return injected(acquisition, PRESSURE, lambda _, values: _on_steps(values, step_mmhg), "edp-quantisation")
 
 
 def volume_coarse(acquisition: Acquisition, step_ml: float) -> Injected:
     """Write the volume in steps of ``step_ml``."""
-    return injected(acquisition, VOLUME, lambda _, values: _on_steps(values, step_ml), "quantisation")
+    return injected(acquisition, VOLUME, lambda _, values: _on_steps(values, step_ml), "volume-quantisation")
 
 
 def _on_steps(values: FloatArray, step: float) -> FloatArray:

@@ -1,5 +1,7 @@
 """What happens in the course of a run, from hardly noticeable to gross: found by its check, no milder as it grows, nothing in health."""
 
+import functools
+
 import numpy as np
 import pytest
 
@@ -8,8 +10,34 @@ from checks.check import Verdict
 from flows.sources.simulated.corpus import clean_acquisition
 from flows.sources.simulated.heart import HEARTS
 from flows.sources.simulated.ladders import RUN_LADDERS
+from flows.sources.simulated.rhythm import Conditions
+from tests.checks import made_acquisitions
 from tests.checks.made_acquisitions import judged
-from tests.checks.made_subjects import CHECKS, drawn, of, rerecorded, simulated, worst
+from tests.checks.made_subjects import (
+    BREATHING,
+    BREATHING_RAMP,
+    CHECKS,
+    FIBRILLATING,
+    REFLEX,
+    SINUS_ARRHYTHMIA,
+    declared,
+    drawn,
+    judged_run,
+    of,
+    rerecorded,
+    simulated,
+    worst,
+)
+
+PREMATURE = Conditions(duration_s=24.0, premature_s=(8.0, 16.0))
+
+
+@pytest.fixture(autouse=True)
+def _segments_are_in_ml(monkeypatch):
+    """Let acquisitions be judged that send segments in place of a volume."""
+    segments = {f"segment-{number}": "mL" for number in range(1, 6)}
+    monkeypatch.setattr(made_acquisitions, "UNITS", made_acquisitions.UNITS | segments)
+
 
 LADDERS = {ladder.name: ladder for ladder in RUN_LADDERS}
 GRADE = {Verdict.PASS: 0, Verdict.NOT_EVALUATED: 0, Verdict.SUSPECT: 1, Verdict.FAIL: 2}
@@ -23,24 +51,39 @@ FAILS_FROM = {
     ("pressure-drifting", "ramp-1"): 10.0,
     ("volume-drifting", "rest"): 20.0,
     ("volume-drifting", "ramp-1"): 10.0,
+    ("steady-ramping", "rest"): 0.012,
+    ("respiration-undeclared", "rest"): 0.12,
+    ("rhythm-undeclared", "ramp-1"): 0.26,
+    ("segment-astray", "rest"): 0.6,
+    ("segment-astray", "ramp-1"): 0.6,
 }
 """By which step at the latest a run fails."""
 
-CHECK = {"pressure-drifting": "pressure-drift", "volume-drifting": "volume-drift"}
+CHECK = {
+    "pressure-drifting": "pressure-drift",
+    "volume-drifting": "volume-drift",
+    "steady-ramping": "steadiness",
+    "respiration-undeclared": "respiration-as-declared",
+    "rhythm-undeclared": "rhythm-as-declared",
+    "segment-astray": "segment-phase",
+}
+OTHERS = ("channel-delay", "channel-delay-gross", "steadiness", "respiration-as-declared", "rhythm-as-declared", "segment-phase")
+
+
+@functools.lru_cache(maxsize=2)
+def climbed(name, heart):
+    """The runs of an acquisition, judged at each severity of a fault."""
+    acquisition, _ = clean_acquisition(heart, 250.0, 3, salines=0)
+    return [judged(LADDERS[name].inject(acquisition, severity).acquisition)[0] for severity in LADDERS[name].severities]
 
 
 def climb(name, heart, run, check):
-    acquisition, _ = clean_acquisition(heart, 250.0, 3, salines=0)
-    grades = []
-    for severity in LADDERS[name].severities:
-        runs, _, _ = judged(LADDERS[name].inject(acquisition, severity).acquisition)
-        grades.append(GRADE[of(runs[run], check).worst()] if runs[run].is_usable else 2)
-    return grades
+    return [GRADE[of(runs[run], check).worst()] if runs[run].is_usable else 2 for runs in climbed(name, heart)]
 
 
 @pytest.mark.parametrize(("name", "run"), FAILS_FROM)
-@pytest.mark.parametrize("heart", ["normal", "failing", "right", "right-loaded"])
-def test_a_sensor_that_moves_is_found_by_its_check(name, run, heart):
+@pytest.mark.parametrize("heart", ["normal", "failing", "right-loaded"])
+def test_what_goes_wrong_in_the_course_of_a_run_is_found_by_its_check(name, run, heart):
     grades = climb(name, heart, run, CHECK.get(name, name))
     due = LADDERS[name].severities.index(FAILS_FROM[name, run])
     assert grades[0] == 0
@@ -61,6 +104,70 @@ def test_a_heart_that_truly_empties_is_no_sensor_that_moves(heart, per_s):
     acquisition, _ = clean_acquisition(heart, 250.0, 3, salines=0)
     runs, _, _ = judged(LADDERS["steady-ramping"].inject(acquisition, per_s).acquisition)
     assert {of(runs["rest"], check).worst() for check in COURSE} == {Verdict.PASS}
+
+
+@pytest.mark.parametrize("fault", ["volume-late", "pressure-late"])
+@pytest.mark.parametrize("heart", ["normal", "large", "failing", "stiff"])
+def test_a_delay_is_found_once_it_weighs(fault, heart):
+    for run in ("rest", "ramp-1"):
+        grades = climb(fault, heart, run, "channel-delay")
+        assert grades == sorted(grades)
+        assert (grades[:3], grades[-2:]) == ([0, 0, 0], [2, 2])
+        assert climb(fault, heart, run, "channel-delay-gross")[-2:] == [2, 2]
+
+
+def test_a_delay_that_was_declared_is_none():
+    assert climb("volume-late-as-declared", "normal", "rest", "channel-delay") == [0] * 6
+
+
+@pytest.mark.parametrize("heart", [heart.name for heart in HEARTS])
+@pytest.mark.parametrize("conditions", [BREATHING_RAMP, SINUS_ARRHYTHMIA, FIBRILLATING, REFLEX, PREMATURE])
+def test_a_sound_heart_is_not_even_suspect(heart, conditions):
+    verdict = judged_run(simulated(heart, conditions))
+    found = {name: of(verdict, name).worst() for name in OTHERS if name in {one.check.name for one in verdict.judged}}
+    assert set(found.values()) <= {Verdict.PASS, Verdict.NOT_EVALUATED}, found
+
+
+@pytest.mark.parametrize("heart", ["mitral-leak", "right", "tricuspid-leak"])
+def test_valves_and_not_wires_set_the_onset_where_nothing_is_said_of_a_delay(heart):
+    assert worst(simulated(heart), "channel-delay") is Verdict.NOT_EVALUATED
+
+
+def test_regurgitation_declared_is_enough_to_say_nothing_of_a_delay():
+    subject = declared(simulated("normal"), conditions=frozenset({"aortic-regurgitation"}))
+    assert worst(subject, "channel-delay") is Verdict.NOT_EVALUATED
+
+
+@pytest.mark.parametrize("gain", [0.6, 1.8])
+def test_a_delay_does_not_depend_on_gains_and_offsets(gain):
+    subject = simulated("normal")
+    pressure, volume = (subject.recording.channels[name].samples for name in ("pressure", "volume"))
+    other = rerecorded(subject, pressure=gain * pressure + 6.0, volume=gain * volume + 40.0)
+    values = [float(CHECKS["channel-delay"].measure(one).value) for one in (subject, other)]
+    assert values[0] == pytest.approx(values[1], abs=0.5)
+
+
+def test_what_was_not_declared_cannot_be_contradicted():
+    subject = simulated("normal", BREATHING)
+    assert worst(subject, "respiration-as-declared") is Verdict.NOT_EVALUATED
+    assert worst(declared(subject, respiration="free"), "respiration-as-declared") is Verdict.NOT_EVALUATED
+    assert worst(declared(subject, respiration="held"), "respiration-as-declared") is Verdict.FAIL
+    assert worst(declared(subject, rhythm=None), "rhythm-as-declared") is Verdict.NOT_EVALUATED
+
+
+def test_sinus_arrhythmia_is_breathing_and_fibrillation_is_not_sinus_rhythm():
+    assert worst(simulated("normal", SINUS_ARRHYTHMIA), "rhythm-as-declared") is Verdict.PASS
+    fibrillating = declared(simulated("normal", FIBRILLATING), rhythm="sinus")
+    assert worst(fibrillating, "rhythm-as-declared") in {Verdict.SUSPECT, Verdict.FAIL}
+
+
+@pytest.mark.parametrize("check", OTHERS[:4] + OTHERS[5:])
+def test_too_little_says_nothing(check):
+    assert worst(drawn(4), check) is Verdict.NOT_EVALUATED
+
+
+def test_breathing_and_rhythm_are_asked_about_and_nothing_is_withheld():
+    assert not CHECKS["respiration-as-declared"].spoils | CHECKS["rhythm-as-declared"].spoils
 
 
 @pytest.mark.parametrize(("gain", "shift"), [(1.3, 0.0), (1.0, 25.0)])

@@ -105,7 +105,7 @@ def test_what_is_declared_stays_readable_and_the_sound_one_is_left_alone(climbed
         for name, values in columns.items():
             np.testing.assert_array_equal(sound.columns[run][name], values)
     assert gross.acquisition is not sound
-    assert gross.expected or ladder.name == "volume-late-as-declared"
+    assert gross.expected or ladder.name in {"volume-late-as-declared", "ecg-hum-60", "ecg-noisy"}
 
 
 def test_beats_named_are_beats_of_their_run(climbed):

@@ -1,0 +1,40 @@
+"""Beats accepted: enough of a run's beats are sound for it to speak for the heart.
+
+A beat is rejected for itself, but where most of them are, what is left was chosen by chance: with white noise of 30 mmHg some three
+beats in ten slip through every check, and none of their numbers is right (computed). The median of a minority is no median of the run.
+Beats that were lost with their samples say nothing against the others, so they do not count.
+"""
+
+from __future__ import annotations
+
+import numpy as np
+
+from checks.check import Check, Level, Limits, Measured, single
+from checks.spoils import EVERYTHING
+from checks.subject import RunSubject
+
+
+def accepted_share(subject: RunSubject) -> Measured:
+    """Return the share of a run's beats that were accepted, shape (); beats rejected while samples are missing do not count.
+
+    NaN where no beat counts.
+    """
+    if subject.accepted is None or subject.accepted.size == 0:
+        return single(np.nan)
+    beats, lost = subject.known_beats(), np.concatenate([[0], np.cumsum(subject.known_signals().missing)])
+    counts = subject.accepted | (lost[beats.end] == lost[beats.start])
+    return single(float(np.mean(subject.accepted[counts])) if counts.any() else np.nan)
+
+
+CHECK = Check(
+    name="beats-accepted",
+    title="Most beats are sound",
+    level=Level.RUN,
+    measure=accepted_share,
+    unit="1",
+    limits=Limits(suspect_below=0.5, fail_below=1.0 / 3.0, basis="house default: a third"),
+    reason="only {value:.0%} of the run's beats are sound (limit {limit:.0%})",
+    remedy="record the run again; the beats' own reasons say what was wrong",
+    spoils=EVERYTHING,
+    after_beats=True,
+)
