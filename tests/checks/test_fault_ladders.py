@@ -18,14 +18,12 @@ STANDSTILL = {"pressure-flat", "volume-flat", "pressure-dropout", "volume-dropou
 COURSE = {"pressure-step", "volume-step", "pressure-drift", "volume-drift"}
 COURSE |= {"channel-delay", "channel-delay-gross", "steadiness", "respiration-as-declared", "rhythm-as-declared", "segment-phase"}
 QUIET = {check.name for check in ALL if re.search("hum|noise|quantisation|ringing|ecg-leak|beats-accepted", check.name)}
-COURSE = {"pressure-step", "volume-step", "pressure-drift", "volume-drift"}
 GROSS = {"samples-scattered": Verdict.SUSPECT}
 """How the grossest fault of a ladder is judged where that is no fail: a fifth of the samples may go, beat by beat."""
 
 ALSO_FOUND = {
-    "fluid-filled": {"ringing"},
+    "fluid-filled": {"ringing", "channel-delay", "channel-delay-gross"},
     "samples-scattered": {"missing-samples"},
-    "fluid-filled": {"channel-delay", "channel-delay-gross"},
     "flat-line": {"loop-closure"} | RANGES,
     "premature-beats": {"loop-closure"},
     "volume-clipped": {"reference-stroke-volume", "reference-volumes", "pressure-drift", "channel-delay", "channel-delay-gross"},
@@ -42,7 +40,6 @@ ELSEWHERE = {
     **dict.fromkeys(STANDSTILL, "ever more of a run stands still, tests/checks/run/test_standstill.py"),
     **dict.fromkeys(COURSE, "sensors move in the course of a run, tests/checks/run/test_course_ladders.py"),
     **dict.fromkeys(QUIET, "ever louder or coarser, tests/checks/run/test_noise_and_hum.py"),
-    **dict.fromkeys(COURSE, "sensors move in the course of a run, tests/checks/run/test_course_ladders.py"),
     **dict.fromkeys(RANGES, "drawn beats run away, tests/checks/beat/test_landmarks_and_ranges.py"),
 }
 """Checks whose ladder no simulated fault climbs, and where it stands."""
