@@ -65,12 +65,14 @@ class Measured:
 
     ``value`` has shape () for an acquisition or run, (n_beats,) for beats; NaN where nothing can be said.
     ``at_s`` has the same shape (seconds from the run's first sample) or is None. Where ``corroborated`` is False a value beyond the
-    fail bound is only suspect.
+    fail bound is only suspect. A check of an acquisition that speaks of its runs one by one names them in ``runs``, with a value each:
+    it then acts on those runs alone, as a check of a run does.
     """
 
     value: FloatArray
     at_s: FloatArray | None = None
     corroborated: BoolArray | None = None
+    runs: tuple[str, ...] = ()
 
 
 def single(value: float, at_s: float = np.nan) -> Measured:
@@ -84,7 +86,8 @@ class Check:
 
     ``reason`` is a sentence with ``{value}`` and ``{limit}``; ``spoils`` names the indices a fail on run or acquisition level reaches;
     ``remedy`` is what the site can do about it. ``corrected`` marks a fault that calibration takes out as long as the check does not fail,
-    ``is_fact`` one whose value and limit say nothing to a reader. ``after_beats`` waits for the verdicts on beats; a ``required`` beat
+    ``is_fact`` one whose value and limit say nothing to a reader. ``concerns`` names the indices a beat check speaks for: a run whose own
+    failed checks withhold them all loses no beat to it. ``after_beats`` waits for the verdicts on beats; a ``required`` beat
     check that could not be evaluated rejects the beat.
     """
 
@@ -98,6 +101,7 @@ class Check:
     remedy: str = ""
     limits_rv: Limits | None = None
     spoils: frozenset[str] = frozenset()
+    concerns: frozenset[str] = frozenset()
     corrected: bool = False
     is_fact: bool = False
     run_kinds: tuple[str, ...] = ("steady", "preload-reduction")
@@ -112,7 +116,10 @@ class Check:
 
 @dataclass(frozen=True, slots=True)
 class Judged:
-    """Verdicts of one check on its subjects: arrays of shape (n,), n = 1 above beat level. ``limit`` is the bound crossed, else NaN."""
+    """Verdicts of one check on its subjects: arrays of shape (n,), n = 1 above beat level. ``limit`` is the bound crossed, else NaN.
+
+    ``runs`` names the run of each verdict where a check of an acquisition speaks of its runs one by one.
+    """
 
     check: Check
     value: FloatArray
@@ -120,6 +127,7 @@ class Judged:
     limit: FloatArray
     at_s: FloatArray
     trouble: str | None = None
+    runs: tuple[str, ...] = ()
 
     def worst(self) -> Verdict:
         """Return the gravest verdict of the subjects; NOT_EVALUATED when there is none."""
@@ -138,6 +146,7 @@ def judge(check: Check, subject: object, limits: Limits, count: int = 1) -> Judg
     nothing = np.full(count, np.nan)
     try:
         found = check.measure(subject)
+        count = len(found.runs) or count
         value, at_s, borne_out = _spread(found, count)
     except Exception as error:  # noqa: BLE001  (whatever a measure raises must not let data through, nor stop the other checks)
         verdicts = (Verdict.NOT_EVALUATED,) * count
@@ -151,7 +160,7 @@ def judge(check: Check, subject: object, limits: Limits, count: int = 1) -> Judg
         Verdict.NOT_EVALUATED if np.isnan(v) else Verdict.FAIL if f else Verdict.SUSPECT if s else Verdict.PASS
         for v, f, s in zip(value.tolist(), fails.tolist(), suspects.tolist(), strict=True)
     )
-    return Judged(check, value, verdicts, limit, at_s)
+    return Judged(check, value, verdicts, limit, at_s, runs=found.runs)
 
 
 def _spread(found: Measured, count: int) -> tuple[FloatArray, FloatArray, BoolArray]:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
@@ -52,17 +52,22 @@ class Finding:
 
 @dataclass(frozen=True)
 class RunVerdict:
-    """A run and its beats, judged. ``rejected_by`` holds the names of the checks that rejected each beat, sorted."""
+    """A run and its beats, judged. ``rejected_by`` holds the names of the checks that rejected each beat, sorted.
+
+    ``doubted_by`` are the checks of the acquisition that failed on this run.
+    """
 
     subject: RunSubject
     judged: tuple[Judged, ...]
     rejected_by: tuple[tuple[str, ...], ...]
     findings: tuple[Finding, ...]
+    doubted_by: tuple[Check, ...] = ()
 
     @property
     def failed(self) -> tuple[Check, ...]:
-        """Return the run checks that failed."""
-        return tuple(j.check for j in self.judged if j.check.level is Level.RUN and j.worst() is Verdict.FAIL)
+        """Return the checks that failed on the run: its own, and those of the acquisition that name it."""
+        own = tuple(j.check for j in self.judged if j.check.level is Level.RUN and j.worst() is Verdict.FAIL)
+        return own + self.doubted_by
 
     @property
     def spoiled(self) -> frozenset[str]:
@@ -81,15 +86,18 @@ class RunVerdict:
 
 
 def judge_run(subject: RunSubject, checks: Sequence[Check], rules: Rules) -> RunVerdict:
-    """Return the verdict on a run and its beats: beat checks first, then the run checks, those on accepted beats last.
+    """Return the verdict on a run and its beats: the run's own signals first, then its beats, then what needs the accepted ones.
 
-    Every check is evaluated, none short-circuited by another's fail.
+    Every check is evaluated, none short-circuited by another's fail, but for one case: where failed checks withhold of the whole run all
+    that a beat check speaks for, its beats are not rejected for that once more, and what the fault cannot reach is still found in them.
     """
     mine = [check for check in checks if check.level is not Level.ACQUISITION and subject.facts.kind in check.run_kinds]
     count = 0 if subject.beats is None else len(subject.beats)
-    on_beats = [_judged(check, subject, rules, count) for check in mine if check.level is Level.BEAT] if count else []
     early = [_judged(check, subject, rules, 1) for check in mine if check.level is Level.RUN and not check.after_beats]
-    ruined = tuple(j.check.name for j in early if j.worst() is Verdict.FAIL and j.check.spoils >= EVERYTHING)
+    failed = [j.check for j in early if j.worst() is Verdict.FAIL]
+    of_beats = [check for check in mine if check.level is Level.BEAT] if count else []
+    on_beats = [_passed_over(check, count, failed) or _judged(check, subject, rules, count) for check in of_beats]
+    ruined = tuple(check.name for check in failed if check.spoils >= EVERYTHING)
     rejected_by = tuple(tuple(sorted({*names, *ruined})) for names in _rejections(on_beats, rules, count))
     accepted = np.array([not names for names in rejected_by], dtype=bool)
     seen = RunSubject(subject.facts, subject.recording, subject.signals, subject.beats, accepted, subject.trouble)
@@ -101,14 +109,40 @@ def judge_run(subject: RunSubject, checks: Sequence[Check], rules: Rules) -> Run
 
 
 def judge_acquisition(subject: AcquisitionSubject, checks: Sequence[Check], rules: Rules) -> tuple[tuple[Judged, ...], tuple[Finding, ...]]:
-    """Return what the acquisition checks found, and its rows of the rejection log."""
+    """Return what the acquisition checks found, and its rows of the rejection log; those that name a run act on it alone (`doubted`)."""
     mine = [check for check in checks if check.level is Level.ACQUISITION]
     judged = tuple(judge(check, subject, rules.limits_of(check, subject.facts.chamber)) for check in mine)
     return judged, tuple(f for j in judged for f in _findings(j, None, rules))
 
 
+def doubted(run: RunVerdict, findings: Sequence[Finding]) -> RunVerdict:
+    """Return the verdict on a run with the acquisition's findings on it among its own: its beats go where one spoils everything."""
+    mine = tuple(finding for finding in findings if finding.run == run.subject.facts.run)
+    guilty = tuple(finding.check for finding in mine if finding.decisive)
+    ruined = {check.name for check in guilty if check.spoils >= EVERYTHING}
+    rejected_by = tuple(tuple(sorted({*names, *ruined})) for names in run.rejected_by) if ruined else run.rejected_by
+    accepted = np.array([not names for names in rejected_by], dtype=bool)
+    return replace(
+        run,
+        subject=run.subject if not ruined else replace(run.subject, accepted=accepted),
+        rejected_by=rejected_by,
+        findings=(*run.findings, *mine),
+        doubted_by=guilty,
+    )
+
+
 def _judged(check: Check, subject: RunSubject, rules: Rules, count: int) -> Judged:
     return judge(check, subject, rules.limits_of(check, subject.facts.chamber), count)
+
+
+def _passed_over(check: Check, count: int, failed: Sequence[Check]) -> Judged | None:
+    """Return a beat check as not evaluated where failed run checks withhold all it speaks for, naming them; else None."""
+    guilty = [other.name for other in failed if check.concerns & other.spoils]
+    if not check.concerns or not check.concerns <= frozenset().union(*(other.spoils for other in failed)):
+        return None
+    nothing = np.full(count, np.nan)
+    because = f"withheld of the whole run by {', '.join(guilty)}"
+    return Judged(check, nothing, (Verdict.NOT_EVALUATED,) * count, nothing.copy(), nothing.copy(), because)
 
 
 def _rejections(on_beats: Sequence[Judged], rules: Rules, count: int) -> list[list[str]]:
@@ -134,11 +168,12 @@ def _is_decisive(check: Check, verdict: Verdict, rules: Rules) -> bool:
 def _findings(judged: Judged, subject: RunSubject | None, rules: Rules) -> list[Finding]:
     """Return the rows of one check; a beat check that could say nothing of any beat, nor had to, gets one row for the run."""
     check, run = judged.check, None if subject is None else subject.facts.run
+    names = judged.runs or (run,) * len(judged.verdict)
     silent = all(verdict is Verdict.NOT_EVALUATED for verdict in judged.verdict)
     if check.level is Level.BEAT and silent and not rules.is_required(check):
         return [_finding(judged, 0, run, None, rules, subject)]
     return [
-        _finding(judged, place, run, place + 1 if check.level is Level.BEAT else None, rules, subject)
+        _finding(judged, place, names[place], place + 1 if check.level is Level.BEAT else None, rules, subject)
         for place, verdict in enumerate(judged.verdict)
         if verdict is not Verdict.PASS
     ]

@@ -153,13 +153,14 @@ def test_every_card_can_be_read_by_a_person(check):
 
 @shown("check", CHECKS, ids=lambda check: check.name)
 def test_what_a_check_spoils_and_requires_fits_its_level(check):
-    assert check.spoils <= CONTRACT
+    assert check.spoils | check.concerns <= CONTRACT
     if check.level is Level.BEAT:
         assert not check.spoils
         assert not check.after_beats
         assert not check.corrected
     else:
         assert not check.required
+        assert not check.concerns
     if check.corrected:
         assert check.spoils
     if check.after_beats:

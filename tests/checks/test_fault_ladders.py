@@ -27,8 +27,8 @@ ALSO_FOUND = {
     "flat-line": {"loop-closure"} | RANGES,
     "premature-beats": {"loop-closure"},
     "volume-clipped": {"reference-stroke-volume", "reference-volumes", "pressure-drift", "channel-delay", "channel-delay-gross"},
-    "pressure-in-kpa": RANGES | {"preload-beats", "pressure-units", "beats-accepted"},
-    "volume-times": RANGES | {"preload-beats", "volume-units", "beats-accepted", "reference-stroke-volume", "reference-volumes"},
+    "pressure-in-kpa": {"preload-beats"},
+    "volume-times": {"preload-beats", "reference-stroke-volume", "reference-volumes"},
 }
 """What else a fault truly breaks beside the check it is made for."""
 

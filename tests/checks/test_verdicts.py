@@ -54,6 +54,26 @@ def test_the_protocol_says_which_checks_are_required():
     assert judged(one, other, required=frozenset()).accepted.all()
 
 
+def test_a_beat_is_not_rejected_for_what_the_run_already_withholds():
+    of_pressure = card("bear", [3.0, 3.0, 3.0], concerns=frozenset({"Pmax"}))
+    wider = run_card("wolf", 3.0, spoils=frozenset({"Pmax", "ESP"}))
+    found = judged(wider, of_pressure)
+    assert found.accepted.all()
+    (told,) = [finding for finding in found.findings if finding.check is of_pressure]
+    assert told.verdict is N
+    assert told.reason == "Bear: not evaluated (withheld of the whole run by wolf)"
+
+
+@pytest.mark.parametrize(
+    "other",
+    [run_card("wolf", 3.0, spoils=frozenset({"EDP"})), run_card("wolf", 1.5, spoils=frozenset({"Pmax"}))],
+    ids=["of something else", "only suspect"],
+)
+def test_a_beat_is_rejected_for_what_the_run_does_not_withhold(other):
+    found = judged(other, card("bear", [3.0, 0.0, 0.0], concerns=frozenset({"Pmax"})))
+    assert found.accepted.tolist() == [False, True, True]
+
+
 def test_landmarks_and_missing_samples_are_required_by_default():
     assert {check.name for check in ALL if check.required} == {"landmarks", "missing-samples"}
 

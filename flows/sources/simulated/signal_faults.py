@@ -109,13 +109,13 @@ def volume_stepped(acquisition: Acquisition, ml: float) -> Injected:
 
 def pressure_in_kpa(acquisition: Acquisition, _severity: float = 1.0) -> Injected:
     """Write the pressure in kPa and declare it as mm[Hg]."""
-    expected = tuple(_all_beats(acquisition, "range-pressure", run) for run in acquisition.columns)
+    expected = tuple(Expected("pressure-units", run) for run in acquisition.columns)
     return Injected(scaled(acquisition, PRESSURE, KPA_PER_MMHG), expected)
 
 
 def volume_times(acquisition: Acquisition, factor: float) -> Injected:
     """Write the volume ``factor`` times too large."""
-    expected = tuple(_all_beats(acquisition, "range-edv", run) for run in acquisition.columns)
+    expected = tuple(Expected("volume-units", run) for run in acquisition.columns)
     return Injected(scaled(acquisition, VOLUME, factor), expected)
 
 
@@ -134,10 +134,6 @@ def _touched(acquisition: Acquisition, check: str, run: str, low: int, high: int
     beats, rate_hz = acquisition.truth[run].beats, acquisition.recipe.rate_hz
     inside = (beats.start_s <= (high - 1) / rate_hz) & (beats.end_s > low / rate_hz)
     return Expected(check, run, _instants(beats.middle_s[inside]))
-
-
-def _all_beats(acquisition: Acquisition, check: str, run: str) -> Expected:
-    return Expected(check, run, _instants(acquisition.truth[run].beats.middle_s))
 
 
 def _instants(middle_s: FloatArray) -> tuple[float, ...]:
