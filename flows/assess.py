@@ -11,7 +11,7 @@ from pathlib import Path
 
 from checks import ALL as CHECKS
 from checks.subject import AcquisitionSubject, RunSubject
-from checks.verdicts import Rules, judge_acquisition, judge_run
+from checks.verdicts import Rules, doubted, judge_acquisition, judge_run
 from flows.assessed_rows import acquisition_row, beat_rows, measure_rows, rejection_rows, run_row
 from flows.channel_sums import channel_rows
 from flows.errors import InputError
@@ -59,7 +59,9 @@ def assess(files: Mapping[str, Path], manifest: Manifest, protocol: Protocol) ->
     runs = [judge_run(subject, CHECKS, rules) for subject in subjects]
     facts = acquisition_facts(manifest, protocol)
     whole = AcquisitionSubject(facts, tuple(run.subject for run in runs), {run.subject.facts.run: run.spoiled for run in runs})
-    judged, findings = judge_acquisition(whole, CHECKS, rules)
+    judged, told = judge_acquisition(whole, CHECKS, rules)
+    runs = [doubted(run, told) for run in runs]
+    findings = tuple(finding for finding in told if finding.run is None)
     failed = tuple(finding.check for finding in findings if finding.decisive)
     reasons = {finding.check.name: finding.reason for finding in findings}
     stages = stages_of(runs, failed, reasons, facts.bsa_m2)

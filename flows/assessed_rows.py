@@ -156,7 +156,7 @@ def measure_rows(judged: Sequence[Judged], runs: Sequence[RunVerdict], manifest:
         {
             "site": manifest.site,
             "acquisition": manifest.acquisition,
-            "run": run,
+            "run": one.runs[place] if one.runs else run,
             "beat": place + 1 if one.check.level is Level.BEAT else None,
             "check": one.check.name,
             "level": str(one.check.level),

@@ -1,9 +1,10 @@
 """Copied signal: two runs of one acquisition cannot hold the same recording.
 
-Two recordings of a heart may look alike, but never share their noise. So a stretch is a copy where both runs go together and what is left
-of them at the highest frequencies goes together too: an exact copy, and one that noise of the same size was laid over (there the noises
-correlate by 0.7, by chance by 0.1 in a second at 250 Hz). A recording without noise, or one coarser than its noise, tells nothing. A copy
-may begin elsewhere in the other run if it is exact. Whose heart the acquisition shows can no longer be trusted then. House default.
+Two recordings of a heart may look alike, but never share their noise. So a second is a copy where both runs go together and what is left
+of them in the upper half of the spectrum goes together too. Each frequency counts alike, whatever stands in it, so mains hum, which may
+well go together, has no more say than the few lines it takes: noises of their own agree by 0.1 a second by chance (at 250 Hz), a copy
+by 1, and one that noise of the same size was laid over still by 0.6. Where no noise stands above the rounding nothing is said. A copy may
+begin elsewhere in the other run if it is exact. Which of the runs is the true one cannot be known, so both are out. House default.
 """
 
 from __future__ import annotations
@@ -15,68 +16,83 @@ import numpy as np
 from checks.check import Check, Level, Limits, Measured, single
 from checks.spoils import EVERYTHING
 from checks.subject import AcquisitionSubject, RunSubject
-from metrics.arrays import BoolArray, FloatArray, robust_sd, smallest_step
+from metrics.arrays import FloatArray, smallest_step
 
 BLOCK_S = 1.0
 LEAST_BLOCK = 100
-LIKE_SIGNALS = 0.99
-LIKE_NOISES = 0.3
-"""Two hearts beating alike go together by 0.99 for a second; only a copy's noise, by the share of samples of one sign, does by 0.3."""
+LIKE_POINTS = 50
+LIKE_SIGNALS = 0.95
+"""A first look, at so many points of a second: only where two runs go together at all is their noise looked at."""
 
-WHITE_GAIN = 4.0
-"""The sixth difference of white noise is 6.8 times its third (from the binomial sums 924 and 20); that of a smooth signal is smaller."""
+LIKE_NOISES = 0.4
+"""Halfway between what noises of their own reach by chance, with four of their standard deviations, and a copy under new noise."""
 
-SIXTH_GAIN = float(np.sqrt(924.0))
+FLAT_NOISE = 0.5
+"""Noise is about as strong in the highest quarter of the spectrum as in the one below; corners of a noiseless signal fall by two thirds."""
+
 LEAST_NOISE_STEPS = 0.5
 """Rounding alone has a standard deviation of 0.29 of its step."""
-
-JUDGED_BY = 20_000
-"""Samples, from the middle, that show whether there is noise: more would only cost time."""
 
 PROBES = 5
 PROBE_SAMPLES = 24
 
 
-def shows_noise(samples: FloatArray) -> bool:
-    """Return whether noise stands above the rounding and the signal at the highest frequencies.
+def shared_noise(one: FloatArray, other: FloatArray) -> tuple[FloatArray, bool]:
+    """Return how far each row's noises go together, from -1 to 1, shape (n,), and whether there is noise at all; rows of shape (n, m).
 
-    >>> wave = np.sin(np.arange(1000) / 8.0)
-    >>> shows_noise(wave), shows_noise(wave + 0.01 * np.random.default_rng(1).standard_normal(1000))
-    (False, True)
+    >>> rng = np.random.default_rng(1)
+    >>> noise = rng.standard_normal((3, 250))
+    >>> own = rng.standard_normal((3, 250))
+    >>> [bool((shared_noise(noise, other)[0] > LIKE_NOISES).all()) for other in (noise, noise + own, own)]
+    [True, True, False]
     """
-    samples = samples[max(samples.size - JUDGED_BY, 0) // 2 :][:JUDGED_BY]
-    third, sixth = robust_sd(np.diff(samples, 3)), robust_sd(np.diff(samples, 6))
-    step = smallest_step(np.round(samples, 6))
-    return bool(sixth > WHITE_GAIN * third and sixth / SIXTH_GAIN > LEAST_NOISE_STEPS * step)
+    window = np.hanning(one.shape[1])
+    quarter = one.shape[1] // 4
+    upper = [np.fft.rfft((rows - rows.mean(axis=1, keepdims=True)) * window, axis=1)[:, quarter:] for rows in (one, other)]
+    first, second = (np.abs(spectrum) for spectrum in upper)
+    size = first * second
+    together = np.where(size > 0.0, np.real(upper[0] * np.conj(upper[1])) / np.where(size > 0.0, size, 1.0), 0.0)
+    noisy = all(_is_noise(height, float(np.sum(window**2)), rows) for height, rows in zip((first, second), (one, other), strict=True))
+    return np.asarray(together.mean(axis=1), dtype=np.float64), noisy
 
 
-def copied_blocks(one: FloatArray, other: FloatArray, block: int) -> BoolArray:
-    """Return which blocks of ``block`` samples are the same recording, shape (n_blocks,), for two signals of one length.
+def _is_noise(height: FloatArray, power: float, rows: FloatArray) -> bool:
+    """Return whether the upper half of a spectrum is noise, above the rounding: of white noise half lies below ln 2 of its mean power."""
+    middle = height.shape[1] // 2
+    below, above = float(np.median(height[:, :middle])), float(np.median(height[:, middle:]))
+    step = smallest_step(np.round(rows[0], 6))
+    return above > FLAT_NOISE * below and above > LEAST_NOISE_STEPS * step * float(np.sqrt(np.log(2.0) * power))
 
-    >>> noise = np.random.default_rng(1).standard_normal((2, 400))
-    >>> copied_blocks(noise[0], noise[0], 200).tolist(), copied_blocks(noise[0], noise[1], 200).tolist()
-    ([True, True], [False, False])
+
+def longest_copy(one: FloatArray, other: FloatArray, block: int) -> float:
+    """Return how many samples in a row, in whole blocks, both hold: from one sample on, or shifted where a copy is exact.
+
+    NaN where both go together in two blocks or more without noise to be told apart by.
     """
-    count = one.size // block
-    first, second = (samples[: count * block].reshape(count, block) for samples in (one, other))
-    noises = np.mean(np.sign(np.diff(first, 3, axis=1)) * np.sign(np.diff(second, 3, axis=1)), axis=1)
-    first, second = (samples - samples.mean(axis=1, keepdims=True) for samples in (first, second))
-    size = np.sqrt(np.sum(first**2, axis=1) * np.sum(second**2, axis=1))
-    like = np.sum(first * second, axis=1) > LIKE_SIGNALS * size
-    copied: BoolArray = like & (size > 0.0) & (noises > LIKE_NOISES)
-    return copied
-
-
-def longest_copy(one: FloatArray, other: FloatArray, block: int) -> int:
-    """Return how many samples in a row, in whole blocks, both hold: from one sample on, or shifted where a copy is exact."""
-    longest = 0
-    for shift in {0, *_exact_shifts(one, other)}:
+    counts = []
+    for shift in sorted({0, *_exact_shifts(one, other)}):
         from_one, from_other = max(shift, 0), max(-shift, 0)
-        length = min(one.size - from_one, other.size - from_other)
-        blocks = copied_blocks(one[from_one : from_one + length], other[from_other : from_other + length], block)
-        edges = np.flatnonzero(np.diff(np.concatenate([[False], blocks, [False]]).astype(np.int8)))
-        longest = max(longest, block * int(np.max(edges[1::2] - edges[::2], initial=0)))
-    return longest
+        count = max(min(one.size - from_one, other.size - from_other) // block, 0)
+        rows = [held[first : first + count * block].reshape(count, block) for held, first in ((one, from_one), (other, from_other))]
+        counts.append(_copied_blocks(*rows))
+    return block * _gravest(counts)
+
+
+def _copied_blocks(one: FloatArray, other: FloatArray) -> float:
+    """Return the most rows in a row that are the same recording, NaN where rows go together and no noise can tell."""
+    stride = max(one.shape[1] // LIKE_POINTS, 1)
+    first, second = (rows[:, ::stride] - rows[:, ::stride].mean(axis=1, keepdims=True) for rows in (one, other))
+    size = np.sqrt(np.sum(first**2, axis=1) * np.sum(second**2, axis=1))
+    copied = (np.sum(first * second, axis=1) > LIKE_SIGNALS * size) & (size > 0.0)
+    alike = np.flatnonzero(copied)
+    if alike.size < 2:
+        return 0.0
+    together, noisy = shared_noise(one[alike], other[alike])
+    if not noisy:
+        return np.nan
+    copied[alike] = together > LIKE_NOISES
+    edges = np.flatnonzero(np.diff(np.concatenate([[False], copied, [False]]).astype(np.int8)))
+    return float(np.max(edges[1::2] - edges[::2], initial=0))
 
 
 def _exact_shifts(one: FloatArray, other: FloatArray) -> set[int]:
@@ -93,27 +109,47 @@ def _exact_shifts(one: FloatArray, other: FloatArray) -> set[int]:
 
 
 def copied_seconds(subject: AcquisitionSubject) -> Measured:
-    """Return the longest stretch two runs share in a channel other than the ECG, seconds, shape ().
+    """Return for each run the longest stretch another one shares in pressure or volume, seconds, shape (n_runs,).
 
-    NaN where no channel is in two runs, at one rate, with noise to tell recordings apart.
+    NaN for a run that no other has a channel of that rate in common with, or that no noise tells apart from one it goes with.
     """
-    noisy = [channels for channels in map(_noisy_channels, subject.runs) if channels]
+    channels = [_compared_channels(run) for run in subject.runs]
+    found: list[list[float]] = [[] for _ in channels]
+    for one, other in combinations(range(len(channels)), 2):
+        shared_s = _shared_seconds(channels[one], channels[other])
+        if shared_s is not None:
+            found[one].append(shared_s)
+            found[other].append(shared_s)
+    value = np.array([_gravest(values) for values in found])
+    return Measured(value, runs=tuple(run.facts.run for run in subject.runs)) if np.isfinite(value).any() else single(np.nan)
+
+
+def _gravest(found: list[float]) -> float:
+    """Return the longest of several stretches, NaN where none was found and not all could be told, or there are none."""
+    longest = max((value for value in found if np.isfinite(value)), default=np.nan)
+    return longest if longest > 0.0 or all(np.isfinite(found)) else np.nan
+
+
+def _shared_seconds(one: dict[str, tuple[FloatArray, float]], other: dict[str, tuple[FloatArray, float]]) -> float | None:
+    """Return the longest stretch two runs share in a channel both have, NaN where none can tell; None where they have none."""
     found = []
-    for one, other in combinations(noisy, 2):
-        for name in sorted(set(one) & set(other)):
-            (first, rate_hz), (second, other_rate_hz) = one[name], other[name]
-            if rate_hz == other_rate_hz:
-                found.append(longest_copy(first, second, max(LEAST_BLOCK, round(BLOCK_S * rate_hz))) / rate_hz)
-    return single(max(found) if found else np.nan)
+    for name in sorted(set(one) & set(other)):
+        (first, rate_hz), (second, other_rate_hz) = one[name], other[name]
+        if rate_hz == other_rate_hz:
+            found.append(longest_copy(first, second, max(LEAST_BLOCK, round(BLOCK_S * rate_hz))) / rate_hz)
+    known = [seconds for seconds in found if np.isfinite(seconds)]
+    return max(known) if known else np.nan if found else None
 
 
-def _noisy_channels(run: RunSubject) -> dict[str, tuple[FloatArray, float]]:
-    """Return samples and rate of the run's pressure, volume and segments as far as they show noise; gaps are zeros."""
+def _compared_channels(run: RunSubject) -> dict[str, tuple[FloatArray, float]]:
+    """Return samples (gaps are zeros) and rate of pressure and volume, of the first segment without a volume, as far as they move."""
     if run.recording is None:
         return {}
-    kept = {name: one for name, one in run.recording.channels.items() if name in {"pressure", "volume"} or name.startswith("segment-")}
-    filled = {name: (np.nan_to_num(one.samples), one.sampling_rate_hz) for name, one in kept.items()}
-    return {name: one for name, one in filled.items() if shows_noise(one[0])}
+    held = run.recording.channels
+    segments = sorted(name for name in held if name.startswith("segment-"))
+    names = [name for name in ("pressure", "volume") if name in held] + (segments[:1] if "volume" not in held else [])
+    kept = {name: (np.nan_to_num(held[name].samples), held[name].sampling_rate_hz) for name in names}
+    return {name: one for name, one in kept.items() if one[0].size and np.ptp(one[0]) > 0.0}
 
 
 CHECK = Check(
@@ -123,7 +159,7 @@ CHECK = Check(
     measure=copied_seconds,
     unit="s",
     limits=Limits(fail_above=1.5, basis="house default: two seconds of shared noise do not happen by chance"),
-    reason="two runs hold the same recording for {value:.0f} s, so it is not known which of them, nor whose, it is (limit {limit:g} s)",
+    reason="the run holds {value:.0f} s that another run holds as well, so it is not known which of them recorded it (limit {limit:g} s)",
     remedy="send the right file for each run, and say which heart and run the copied one is of",
     spoils=EVERYTHING,
 )

@@ -79,15 +79,15 @@ def _reject(tables: Mapping[str, Columns], found: Mapping[str, str]) -> None:
 
 
 def _log(rejections: Columns, acquisitions: Columns, found: Mapping[str, str]) -> None:
-    """Write the reason into the log: instead of what the check said of the acquisition by itself, or as a row of its own."""
-    own = {name: place for place, name in enumerate(rejections["acquisition"]) if rejections["check"][place] == CHECK.name}
+    """Write the reason into the log: where the check could say nothing of the acquisition by itself, or as a row of its own."""
+    rows = zip(rejections["acquisition"], rejections["check"], rejections["run"], strict=True)
+    own = {name: place for place, (name, check, run) in enumerate(rows) if check == CHECK.name and run is None}
     sites = dict(zip(acquisitions["acquisition"], acquisitions["site"], strict=True))
     for name, reason in sorted(found.items()):
         told = {"verdict": "fail", "decisive": True, "action": "reject"}
         if name in own:
             place = own[name]
-            before = f"{rejections['reason'][place]}; " if rejections["decisive"][place] else ""
-            _set(rejections, place, {**told, "reason": before + reason})
+            _set(rejections, place, {**told, "reason": reason})
             continue
         row = {**dict.fromkeys(rejections), "site": sites[name], "acquisition": name, "check": CHECK.name, "reason": reason, **told}
         for column, values in rejections.items():
@@ -98,7 +98,7 @@ def with_copy_told(evidence: Mapping[str, Any], reason: str | None) -> Mapping[s
     """Return the evidence of an acquisition with the copy as its first finding, in the place of what the check said by itself."""
     if reason is None:
         return evidence
-    others = [finding for finding in evidence.get("findings", ()) if finding["check"] != CHECK.name]
+    others = [one for one in evidence.get("findings", ()) if one["check"] != CHECK.name or one["run"] is not None]
     finding: dict[str, Any] = {
         "check": CHECK.name,
         "title": CHECK.title,

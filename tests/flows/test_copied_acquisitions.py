@@ -134,8 +134,8 @@ def test_a_reason_names_the_first_copies_and_counts_the_rest():
 
 
 def test_the_page_tells_the_copy_first():
-    evidence = {"findings": [{"check": "flat-line"}, {"check": CHECK}]}
+    evidence = {"findings": [{"check": "flat-line", "run": "rest"}, {"check": CHECK, "run": None}, {"check": CHECK, "run": "ramp"}]}
     told = with_copy_told(evidence, "sent twice")
-    assert [finding["check"] for finding in told["findings"]] == [CHECK, "flat-line"]
+    assert [(one["check"], one["run"]) for one in told["findings"]] == [(CHECK, None), ("flat-line", "rest"), (CHECK, "ramp")]
     assert told["findings"][0]["reason"] == "sent twice"
     assert with_copy_told(evidence, None) is evidence
