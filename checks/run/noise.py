@@ -17,8 +17,7 @@ from checks.run.hum import MAINS_HZ, line_amplitude, passed, shown_at_hz, stretc
 from checks.run.units import span
 from checks.spoils import PRESSURE_EXTREMES, STEEPEST, VOLUME_SHAPE
 from checks.subject import RunSubject
-from metrics.signals.filters import slope_per_s, zero_phase
-from metrics.signals.landmarks import steadied
+from metrics.signals.filters import slope_per_s, steadied, zero_phase
 from metrics.signals.recording import Channel
 
 SINE = 1.1

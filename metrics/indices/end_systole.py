@@ -14,7 +14,6 @@ import numpy as np
 from metrics.arrays import BoolArray, FloatArray, IntArray, argmax_within, taken
 from metrics.signals.beats import Beats
 from metrics.signals.calibrate import Signals
-from metrics.signals.landmarks import steadied
 from metrics.stats.lines import Line, deming_line
 
 TOLERANCE_ML = 0.01
@@ -38,8 +37,7 @@ def end_systole(signals: Signals, beats: Beats, v0_ml: float | None) -> EndSysto
     largest ratio (0.8 % of the slope at 0.5 mmHg and 0.6 mL; computed). Where V - V0 is not positive throughout a beat's ejection its
     ratio means nothing; such a beat falls back to max P/V.
     """
-    pressure_mmhg = steadied(signals.pressure_mmhg, signals.sampling_rate_hz)
-    volume_ml = steadied(signals.volume_ml, signals.sampling_rate_hz)
+    pressure_mmhg, volume_ml = signals.steadied_pressure_mmhg, signals.steadied_volume_ml
     inside = (beats.dpdt_max_at >= 0) & (beats.dpdt_min_at >= 0)
     start = np.where(inside, beats.dpdt_max_at, 0)
     stop = np.where(inside, beats.dpdt_min_at + 1, 0)

@@ -8,19 +8,20 @@ drift are common practice, no source.
 from __future__ import annotations
 
 from dataclasses import dataclass
+from functools import cached_property
 
 import numpy as np
 
 from metrics.arrays import BoolArray, FloatArray, IntArray, robust_sd
 from metrics.signals.facts import PressureCalibration, RunFacts, VolumeCalibration
-from metrics.signals.filters import slope_per_s, zero_phase
+from metrics.signals.filters import slope_per_s, steadied, zero_phase
 from metrics.signals.recording import Channel, Recording
 
 MAXIMUM_STRETCH = 20.0
 """A time base that claims more than this many times the samples it holds is broken, not gappy; house default."""
 
 
-@dataclass(frozen=True, slots=True)
+@dataclass(frozen=True)
 class Signals:
     """One run on a uniform time base; every array has shape (n,).
 
@@ -43,6 +44,16 @@ class Signals:
     def time_s(self) -> FloatArray:
         """Return seconds from the run's first sample, shape (n,)."""
         return np.arange(self.pressure_mmhg.size) / self.sampling_rate_hz
+
+    @cached_property
+    def steadied_pressure_mmhg(self) -> FloatArray:
+        """Return the pressure that landmarks are read from, shape (n,)."""
+        return steadied(self.pressure_mmhg, self.sampling_rate_hz)
+
+    @cached_property
+    def steadied_volume_ml(self) -> FloatArray:
+        """Return the volume that landmarks are read from, shape (n,)."""
+        return steadied(self.volume_ml, self.sampling_rate_hz)
 
 
 def two_point_line(points: tuple[tuple[float, float], ...]) -> tuple[float, float]:

@@ -9,19 +9,17 @@ ejecting, so there to the end of relaxation (pressure within 5 mmHg of the beat'
 from __future__ import annotations
 
 import numpy as np
-from scipy.signal import savgol_filter
 
 from metrics.arrays import FloatArray, IntArray, argmax_within, argmin_within, taken
 from metrics.signals.beats import Beats
 from metrics.signals.calibrate import Signals
-from metrics.signals.filters import slope_per_s, zero_phase
+from metrics.signals.filters import slope_per_s, steadied, zero_phase
 from metrics.signals.r_waves import r_waves
 from metrics.signals.segment import upstrokes
 
 UPSTROKE_SHARE = 0.10
 UPSTROKE_SEARCH_S = 0.250
 RELAXED_ABOVE_EDP_MMHG = 5.0
-LANDMARK_WINDOW_S = 0.040
 STEEPEST_WINDOW_S = 0.080
 
 
@@ -40,7 +38,7 @@ def beats_of(signals: Signals, chamber: str) -> Beats:
     peak = steepest(signals, peak, start, end, chamber)
     relaxing = argmin_within(signals.dpdt_mmhg_per_s, peak + 1, end)
     pmax_at = argmax_within(signals.pressure_mmhg, start, np.where(relaxing >= 0, relaxing, end))
-    smooth_volume = steadied(signals.volume_ml, rate)
+    smooth_volume = signals.steadied_volume_ml
     esv_at = argmin_within(smooth_volume, start, end_of_ejection(signals.pressure_mmhg, start, end, relaxing, chamber))
     return Beats(
         detector="ecg" if np.mean(r_at >= 0 if r_at.size else [False]) > 0.5 else "pressure",
@@ -109,19 +107,6 @@ def end_of_ejection(pressure_mmhg: FloatArray, start: IntArray, end: IntArray, r
     relaxed = (pressure_mmhg <= relaxed_below_mmhg[beat_of_sample]).astype(np.float64)
     first = argmax_within(relaxed, last, end)
     return np.where((first >= 0) & (relaxed[np.maximum(first, 0)] > 0.0), first + 1, end)
-
-
-def steadied(samples: FloatArray, sampling_rate_hz: float) -> FloatArray:
-    """Return a channel averaged over 40 ms by a local quadratic, shape and unit of ``samples``: what landmarks read.
-
-    The smallest of noisy samples lies below the smallest value; a quadratic over 40 ms keeps the bend near end-systole and takes most
-    of that bias away. Savitzky and Golay 1964, Anal Chem 36:1627 (from memory).
-    """
-    window = max(3, round(LANDMARK_WINDOW_S * sampling_rate_hz) | 1)
-    if samples.size <= window:
-        return samples
-    smooth: FloatArray = savgol_filter(samples, window, 2)
-    return smooth
 
 
 def loop_areas(pressure_mmhg: FloatArray, volume_ml: FloatArray, start: IntArray, end: IntArray) -> FloatArray:

@@ -17,8 +17,7 @@ from scipy import signal
 from metrics.arrays import FloatArray, argmax_within, running_median, taken
 from metrics.signals.calibrate import calibrated_volume_ml, observed_rate_hz
 from metrics.signals.facts import RunFacts, VolumeCalibration
-from metrics.signals.filters import zero_phase
-from metrics.signals.landmarks import steadied
+from metrics.signals.filters import steadied, zero_phase
 from metrics.signals.recording import Recording
 
 LEAST_R = 0.65

@@ -4,7 +4,8 @@ import numpy as np
 import pytest
 
 from metrics.signals.calibrate import Signals
-from metrics.signals.landmarks import beats_of, end_diastoles, end_of_ejection, loop_areas, steadied
+from metrics.signals.filters import steadied
+from metrics.signals.landmarks import beats_of, end_diastoles, end_of_ejection, loop_areas
 from tests.metrics.recorded_hearts import heart_runs, nearest_true, signals_and_beats
 
 HEARTS = ("normal", "small", "large", "fast", "failing", "stiff", "high-afterload", "right", "right-loaded")
