@@ -25,7 +25,7 @@ from flows.errors import InputError
 from flows.publish.copies import copies
 from flows.sources.simulated.acquisition import Acquisition
 from flows.sources.simulated.corpus import Shelf, clean_acquisition, clean_recipe, reached
-from flows.sources.simulated.heart import LEFT_HEARTS, RIGHT_HEARTS
+from flows.sources.simulated.heart import CLOSED_HEARTS, HEARTS
 from flows.sources.simulated.ladders import ACQUISITION_LADDERS, RUN_LADDERS, Ladder
 from flows.sources.simulated.reading import true_indices
 from flows.sources.simulated.rhythm import Breathing, Conditions
@@ -163,7 +163,7 @@ def moved(index: str, value: float, sound: float, half: float) -> bool:
 
 def seed_of(heart: str) -> int:
     """Return the seed of a heart's acquisition, one of its own."""
-    return 1 + [one.name for one in LEFT_HEARTS + RIGHT_HEARTS].index(heart)
+    return 1 + [one.name for one in HEARTS + CLOSED_HEARTS].index(heart)
 
 
 def examined(case: Case) -> Examined:

@@ -317,7 +317,7 @@ def main() -> int:
     places = [int(text) - 1 for text in asked.severities.split(",")]
     heart_names = [heart.name for heart in hearts(asked.hearts)]
     chosen = cases(names, places, heart_names, rates_hz, 0 if asked.full else asked.pairs)
-    sound = [(heart.name, rate_hz) for heart in HEARTS for rate_hz in rates_hz]
+    sound = [(name, rate_hz) for name in dict.fromkeys([*(heart.name for heart in HEARTS), *heart_names]) for rate_hz in rates_hz]
     if not asked.full:
         sound = sound[:: len(rates_hz)] if len(rates_hz) == 1 else [pair for at, pair in enumerate(sound) if at % 4 in {0, 3}]
     found, clean = measured(chosen, [] if asked.no_clean else sound, asked.workers, sys.stderr.write)

@@ -1,4 +1,9 @@
-"""One ventricle solved through time: filling source, two valves with inertia, a three-element windkessel.
+"""One ventricle solved through time: what fills it, two valves with inertia, a three-element windkessel.
+
+It is filled from a pressure source, or, where the heart has a `VenousReturn`, in a closed loop: arteries, peripheral resistance, venous
+reservoir, venous resistance, atrium and ventricle again. No blood is made or lost there. The other side of the heart and the lungs are
+lumped into the reservoir, so an occlusion raises the venous resistance over seconds, as it reaches the ventricle through them. Breath
+moves the pressure around heart and atrium against that in the vessels outside the chest; a sensor shows the pressure against the air.
 
 The windkessel is that of Westerhof 1971 (from memory): characteristic resistance in series with compliance parallel to the peripheral
 resistance. Valves let blood pass one way only; blood has inertia, so flow goes on for a moment after the pressure gradient has turned.
@@ -17,6 +22,9 @@ from flows.sources.simulated.heart import Heart
 from flows.sources.simulated.rhythm import STEP_S, Conditions, Schedule, schedule, seconds
 
 WARM_UP_S = 9.0
+ATRIAL_SYSTOLE_S = 0.2
+"""How long an atrium of the closed loop contracts, up to the onset of the ventricle's contraction: it is past its peak at the R wave."""
+
 KICK_BEFORE_S = 0.095
 KICK_WIDTH_S = 0.026
 ABERRANT_STRETCH = 1.1
@@ -24,10 +32,22 @@ ABERRANT_STRETCH = 1.1
 
 
 @dataclass(frozen=True, slots=True)
+class Loop:
+    """What else a closed loop holds on the grid of a solution, arrays of shape (n,): stressed volumes in mL, return in mL/s."""
+
+    atrial_volume_ml: FloatArray
+    venous_volume_ml: FloatArray
+    arterial_volume_ml: FloatArray
+    venous_return_ml_per_s: FloatArray
+    chest_pressure_mmhg: FloatArray
+
+
+@dataclass(frozen=True, slots=True)
 class Solution:
     """A run solved on the grid of `STEP_S`, arrays of shape (n,), first sample at the run's time 0.
 
-    Pressures in mmHg, volume in mL, flows in mL/s. ``schedule`` counts its onsets from ``first``, the run's first step.
+    Pressures in mmHg, volume in mL, flows in mL/s. ``schedule`` counts its onsets from ``first``, the run's first step. In a closed
+    loop ``filling_pressure_mmhg`` is the atrium's.
     """
 
     heart: Heart
@@ -41,6 +61,7 @@ class Solution:
     inflow_ml_per_s: FloatArray
     activation: FloatArray
     filling_pressure_mmhg: FloatArray
+    loop: Loop | None = None
 
     @property
     def time_s(self) -> FloatArray:
@@ -55,10 +76,10 @@ def solve(heart: Heart, conditions: Conditions, seed: int = 0) -> Solution:
     first = round(WARM_UP_S / STEP_S)
     steps = first + round(conditions.duration_s / STEP_S) + 1
     strength, degree = _drive(heart, beats, steps)
-    source = _filling_pressure(heart, conditions, beats, steps)
-    columns = _march(heart, strength, degree, source)
-    pressure, volume, aortic, outflow, inflow = (column[first:] for column in columns)
-    return Solution(heart, conditions, beats, first, pressure, volume, aortic, outflow, inflow, degree[first:], source[first:])
+    columns = _march(heart, strength, degree, *_filling(heart, conditions, beats, steps))
+    pressure, volume, aortic, outflow, inflow, filling, *others = (column[first:] for column in columns)
+    loop = Loop(*others) if others else None
+    return Solution(heart, conditions, beats, first, pressure, volume, aortic, outflow, inflow, degree[first:], filling, loop)
 
 
 def _drive(heart: Heart, beats: Schedule, steps: int) -> tuple[FloatArray, FloatArray]:
@@ -79,8 +100,29 @@ def _drive(heart: Heart, beats: Schedule, steps: int) -> tuple[FloatArray, Float
     return 1.0 - strength_left, 1.0 - degree_left
 
 
-def _filling_pressure(heart: Heart, conditions: Conditions, beats: Schedule, steps: int) -> FloatArray:
-    """Return the pressure that fills the ventricle, shape (steps,): its level, the manoeuvre, breathing, and the atrium's kick."""
+def _filling(heart: Heart, conditions: Conditions, beats: Schedule, steps: int) -> tuple[FloatArray, FloatArray, FloatArray]:
+    """Return what fills the ventricle on the grid: a source's pressure and nothing else, or what a closed loop goes by.
+
+    That is the atrium's elastance, the conductance of the veins and the pressure in the chest beyond its mean.
+    """
+    veins = heart.veins
+    contraction = np.zeros(steps)
+    if not conditions.fibrillating:
+        for onset, premature in zip(beats.onset, beats.premature, strict=True):
+            if not premature:
+                _contract(contraction, int(onset), is_kick=veins is None)
+    breath = _breath(conditions, steps)
+    if veins is None:
+        level = _level(conditions, None if breath is None else 1.0 + breath, steps)
+        source = np.asarray(level * (heart.filling_pressure_mmhg + heart.atrial_kick_mmhg * contraction), dtype=np.float64)
+        return source, np.zeros(steps), np.zeros(steps)
+    relaxed, contracted = veins.atrial_elastance, veins.atrial_elastance_contracted
+    chest = np.zeros(steps) if breath is None else -heart.filling_pressure_mmhg * breath
+    return relaxed + (contracted - relaxed) * contraction, _level(conditions, None, steps) ** 2 / veins.resistance, chest
+
+
+def _level(conditions: Conditions, swing: FloatArray | None, steps: int) -> FloatArray:
+    """Return what the occlusion, breath (``swing``, where it acts on the level) and a slow trend leave of the filling, shape (steps,)."""
     run_s = np.arange(steps) * STEP_S - WARM_UP_S
     level = np.full(steps, 1.0)
     occlusion = conditions.occlusion
@@ -91,25 +133,41 @@ def _filling_pressure(heart: Heart, conditions: Conditions, beats: Schedule, ste
             held = 1.0 - math.exp(-max(occlusion.deflation_s - occlusion.onset_s, 0.0) / occlusion.time_constant_s)
             fall = np.where(since > 0.0, held * np.exp(-since / occlusion.time_constant_s), fall)
         level = 1.0 - (1.0 - occlusion.floor) * fall
-    if conditions.breathing is not None:
-        phase = 2.0 * math.pi * conditions.breathing.rate_per_min / 60.0 * (run_s + WARM_UP_S)
-        level = level * (1.0 + conditions.breathing.depth * np.sin(phase))
+    if swing is not None:
+        level = level * swing
     if conditions.filling_trend_per_s:
         level = level * np.maximum(1.0 + conditions.filling_trend_per_s * np.clip(run_s, 0.0, None), 0.1)
-    kick = np.zeros(steps)
-    if not conditions.fibrillating:
-        for onset, premature in zip(beats.onset, beats.premature, strict=True):
-            if not premature:
-                centre = int(onset) - round(KICK_BEFORE_S / STEP_S)
-                low, high = max(0, centre - 220), min(steps, centre + 221)
-                kick[low:high] += np.exp(-0.5 * ((np.arange(low, high) - centre) * (STEP_S / KICK_WIDTH_S)) ** 2)
-    return np.asarray(level * (heart.filling_pressure_mmhg + heart.atrial_kick_mmhg * kick), dtype=np.float64)
+    return level
 
 
-def _march(heart: Heart, strength: FloatArray, degree: FloatArray, source: FloatArray) -> tuple[FloatArray, ...]:
-    """Return pressure, volume, arterial pressure, outflow and inflow on the grid.
+def _breath(conditions: Conditions, steps: int) -> FloatArray | None:
+    """Return breathing's swing on the grid, filling more above 0, None where the breath is held."""
+    if conditions.breathing is None:
+        return None
+    run_s = np.arange(steps) * STEP_S - WARM_UP_S
+    phase = 2.0 * math.pi * conditions.breathing.rate_per_min / 60.0 * (run_s + WARM_UP_S)
+    return np.asarray(conditions.breathing.depth * np.sin(phase), dtype=np.float64)
 
-    Flows are stepped implicitly in their own resistance, then volume and arterial pressure with the new flows.
+
+def _contract(contraction: FloatArray, onset: int, *, is_kick: bool) -> None:
+    """Add one atrial contraction before the onset of the ventricle's: the kick of a source, or an atrium's own activation up to 1."""
+    if is_kick:
+        centre = onset - round(KICK_BEFORE_S / STEP_S)
+        low, high = max(0, centre - 220), min(contraction.size, centre + 221)
+        contraction[low:high] += np.exp(-0.5 * ((np.arange(low, high) - centre) * (STEP_S / KICK_WIDTH_S)) ** 2)
+        return
+    low, high = max(0, onset - round(ATRIAL_SYSTOLE_S / STEP_S)), min(contraction.size, onset)
+    if low < high:
+        since = (np.arange(low, high) - onset) * (STEP_S / ATRIAL_SYSTOLE_S)
+        contraction[low:high] = np.maximum(contraction[low:high], np.sin(math.pi * since) ** 2)
+
+
+def _march(
+    heart: Heart, strength: FloatArray, degree: FloatArray, filler: FloatArray, conductance: FloatArray, chest: FloatArray
+) -> tuple[FloatArray, ...]:
+    """Return pressure, volume, arterial pressure, outflow, inflow and filling pressure on the grid, then what a `Loop` holds.
+
+    Flows are stepped implicitly in their own resistance, then volumes and arterial pressure with the new flows.
     """
     ees, v0, bend = heart.ees_mmhg_per_ml, heart.v0_ml, heart.espvr_bend_mmhg_per_ml2
     scale, exponent = heart.passive_pressure_mmhg, heart.passive_exponent_per_ml
@@ -120,13 +178,22 @@ def _march(heart: Heart, strength: FloatArray, degree: FloatArray, source: Float
     leak, charge = 1.0 / heart.peripheral_resistance, STEP_S / heart.compliance_ml_per_mmhg
     is_leaky = heart.inlet_leak > 0.0 or heart.outlet_leak > 0.0
     volume = v0 + math.log1p(heart.filling_pressure_mmhg / scale) / exponent
-    stored = heart.downstream_pressure_mmhg + 0.3 * ees * (volume - v0)
+    downstream = heart.downstream_pressure_mmhg
+    stored = downstream + 0.3 * ees * (volume - v0)
+    veins = heart.veins
+    empty_atrium, empty_veins, stiffness, atrium, reservoir = _emptiness_and_start(heart, volume, stored)
     outflow = inflow = forward = 0.0
     exp = math.exp
-    rows = []
-    for strong, active, filling in zip(strength.tolist(), degree.tolist(), source.tolist(), strict=True):
+    rows, loop_rows = [], []
+    columns = (strength.tolist(), degree.tolist(), filler.tolist(), conductance.tolist(), chest.tolist())
+    for strong, active, given, open_veins, around in zip(*columns, strict=True):
         stretch = volume - v0
         pressure = strong * (ees + bend * stretch) * stretch + (1.0 - active) * scale * (exp(exponent * stretch) - 1.0)
+        filling = given
+        if veins is not None:
+            pressure += around
+            filling = given * (atrium - empty_atrium) + around
+            downstream = (reservoir - empty_veins) * stiffness
         outflow = (outflow + out_gain * (pressure - stored)) * out_damping
         outflow = forward = max(outflow, 0.0)
         inflow = (inflow + in_gain * (filling - pressure)) * in_damping
@@ -137,7 +204,28 @@ def _march(heart: Heart, strength: FloatArray, degree: FloatArray, source: Float
                 through_inlet -= heart.inlet_leak * math.sqrt(pressure - filling)
             if outflow == 0.0 and stored > pressure:
                 forward -= heart.outlet_leak * math.sqrt(stored - pressure)
-        rows.append((pressure, volume, stored + heart.characteristic_resistance * forward, forward, through_inlet))
+        rows.append((pressure, volume, stored + heart.characteristic_resistance * forward, forward, through_inlet, filling))
+        runoff = (stored - downstream) * leak
+        if veins is not None:
+            returning = (downstream - filling) * open_veins
+            loop_rows.append((atrium, reservoir, stored, returning))
+            atrium += STEP_S * (returning - through_inlet)
+            reservoir += STEP_S * (runoff - returning)
         volume += STEP_S * (through_inlet - forward)
-        stored += charge * (forward - (stored - heart.downstream_pressure_mmhg) * leak)
-    return tuple(np.ascontiguousarray(column) for column in np.asarray(rows, dtype=np.float64).T)
+        stored += charge * (forward - runoff)
+    found = tuple(np.ascontiguousarray(column) for column in np.asarray(rows, dtype=np.float64).T)
+    if veins is None:
+        return found
+    atrial, venous, arterial, back = (np.ascontiguousarray(column) for column in np.asarray(loop_rows, dtype=np.float64).T)
+    return *found, atrial, venous, heart.compliance_ml_per_mmhg * arterial, back, chest
+
+
+def _emptiness_and_start(heart: Heart, volume_ml: float, stored_mmhg: float) -> tuple[float, float, float, float, float]:
+    """Return unstretched volumes of atrium and veins, the veins' stiffness, and volumes to start from: what is not elsewhere is venous."""
+    veins = heart.veins
+    if veins is None:
+        return 0.0, 0.0, 0.0, 0.0, 0.0
+    held = heart.filling_pressure_mmhg / veins.atrial_elastance
+    elsewhere = volume_ml - heart.v0_ml + held + heart.compliance_ml_per_mmhg * stored_mmhg
+    at_start = veins.atrial_unstressed_ml + held, veins.unstressed_ml + veins.stressed_volume_ml - elsewhere
+    return veins.atrial_unstressed_ml, veins.unstressed_ml, 1.0 / veins.compliance_ml_per_mmhg, *at_start

@@ -22,7 +22,7 @@ from flows.sources.simulated.acquisition import RECORDING_HOUR, Acquisition, Ide
 from flows.sources.simulated.activation import FloatArray
 from flows.sources.simulated.catheter import Catheter
 from flows.sources.simulated.faults import Expected, Injected
-from flows.sources.simulated.heart import LEFT_HEARTS, RIGHT_HEARTS, Heart, heart_named
+from flows.sources.simulated.heart import CLOSED_HEARTS, HEARTS, LEFT_HEARTS, RIGHT_HEARTS, Heart, heart_named
 from flows.sources.simulated.package import csv_bytes
 from flows.sources.simulated.reading import Indices, read_indices, true_indices
 from flows.sources.simulated.rhythm import Conditions, Injection, Occlusion
@@ -35,19 +35,23 @@ RAMP = Conditions(duration_s=15.0, occlusion=Occlusion(onset_s=3.0, deflation_s=
 SALINE = Conditions(duration_s=12.0, rr_spread=0.004, injection=Injection(onset_s=3.0, peak=0.25))
 """Breath held and rhythm calm: what the beats' own variation does to the regression would drown what the saline does."""
 
+CLOSED_EVERY = 3
+"""Every third heart is one of `CLOSED_HEARTS`, so that no fault is tried on one kind of circulation alone."""
+
 FIRST_DAY = datetime(2026, 2, 2, 9, 0, tzinfo=UTC)
 
 
 def hearts(count: int) -> tuple[Heart, ...]:
     """Return ``count`` hearts, left and right in turn as far as there are right ones: 12 are six kinds of each side.
 
-    Raises ValueError beyond the number of hearts there are.
+    Every third is in a closed loop. Raises ValueError beyond the number of hearts there are.
     """
     paired = [heart for pair in zip(LEFT_HEARTS, RIGHT_HEARTS, strict=True) for heart in pair]
     if not 0 < count <= len(paired):
         message = f"there are {len(paired)} hearts"
         raise ValueError(message)
-    return tuple(paired[:count])
+    closed = dict(zip(HEARTS, CLOSED_HEARTS, strict=True))
+    return tuple(closed[heart] if place % CLOSED_EVERY == 0 else heart for place, heart in enumerate(paired[:count], 1))
 
 
 def usual_catheter(seed: int) -> Catheter:

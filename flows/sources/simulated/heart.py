@@ -12,6 +12,24 @@ from dataclasses import dataclass, replace
 
 
 @dataclass(frozen=True, slots=True)
+class VenousReturn:
+    """What closes the loop from the arteries back to the ventricle: a venous reservoir, its outlet's resistance, an atrium.
+
+    ``stressed_volume_ml`` is all blood beyond what the vessels, the atrium and the ventricle hold unstretched; it fills the loop and
+    is conserved. Compliance in mL/mmHg, resistance in mmHg s/mL, atrial elastances in mmHg/mL. Values are house choices in the order
+    of what is known of the systemic veins: about 100 mL/mmHg and 2.5 L unstressed.
+    """
+
+    stressed_volume_ml: float
+    resistance: float
+    compliance_ml_per_mmhg: float = 100.0
+    unstressed_ml: float = 2500.0
+    atrial_elastance: float = 0.16
+    atrial_elastance_contracted: float = 0.4
+    atrial_unstressed_ml: float = 10.0
+
+
+@dataclass(frozen=True, slots=True)
 class Heart:
     """One ventricle, what fills it and what it ejects into.
 
@@ -20,6 +38,9 @@ class Heart:
     ``electromechanical_delay_s`` after the R wave. ``espvr_bend_mmhg_per_ml2`` is the a of a bent end-systolic relation (below 0: the
     slope falls with volume; ``ees_mmhg_per_ml`` is then the slope at V0). The leaks are what passes a shut valve backwards, in mL/s
     at 1 mmHg, growing with the root of the gradient as through an orifice. ``conditions`` are what a site would declare.
+
+    With ``veins`` the ventricle is part of a closed loop: then ``filling_pressure_mmhg`` is only where the atrium begins and by what
+    breath swings, and neither the kick nor the downstream pressure is used.
     """
 
     name: str
@@ -46,6 +67,7 @@ class Heart:
     inlet_leak: float = 0.0
     outlet_leak: float = 0.0
     conditions: tuple[str, ...] = ()
+    veins: VenousReturn | None = None
 
     @property
     def rr_s(self) -> float:
@@ -167,9 +189,48 @@ UNUSUAL_HEARTS = (
 """Ventricles in which a rule of thumb does not hold: a bent end-systolic relation, or a valve that leaks while it should be shut."""
 
 
+LEFT_ATRIUM = VenousReturn(1500.0, 0.055)
+LARGE_LEFT_ATRIUM = replace(LEFT_ATRIUM, atrial_elastance=0.18, atrial_elastance_contracted=0.36)
+RIGHT_ATRIUM = VenousReturn(1250.0, 0.055, atrial_elastance=0.12, atrial_elastance_contracted=0.28)
+
+_CLOSED = (
+    ("normal", LEFT_ATRIUM, 1500.0, 0.055, 1.20),
+    ("small", LEFT_ATRIUM, 1450.0, 0.075, 1.55),
+    ("large", LEFT_ATRIUM, 1550.0, 0.050, 1.00),
+    ("fast", LEFT_ATRIUM, 1550.0, 0.045, 0.95),
+    ("failing", LARGE_LEFT_ATRIUM, 2200.0, 0.055, 0.90),
+    ("stiff", LEFT_ATRIUM, 1750.0, 0.060, 1.35),
+    ("high-afterload", LEFT_ATRIUM, 1750.0, 0.065, 1.75),
+    ("right", RIGHT_ATRIUM, 1250.0, 0.055, 0.10),
+    ("right-loaded", RIGHT_ATRIUM, 1400.0, 0.060, 0.30),
+    ("right-small", RIGHT_ATRIUM, 1300.0, 0.065, 0.12),
+    ("right-large", RIGHT_ATRIUM, 1350.0, 0.055, 0.09),
+    ("right-fast", RIGHT_ATRIUM, 1450.0, 0.050, 0.085),
+    ("right-failing", RIGHT_ATRIUM, 1750.0, 0.055, 0.13),
+    ("right-stiff", RIGHT_ATRIUM, 1550.0, 0.060, 0.15),
+)
+"""Twin, atrium, stressed volume, venous resistance, peripheral resistance: blood runs off into veins fuller than what a source's does."""
+
+CLOSED_HEARTS = tuple(
+    replace(
+        next(heart for heart in HEARTS if heart.name == name),
+        name=f"closed-{name}",
+        peripheral_resistance=peripheral,
+        veins=replace(atrium, stressed_volume_ml=stressed_ml, resistance=venous),
+    )
+    for name, atrium, stressed_ml, venous, peripheral in _CLOSED
+)
+"""The ventricles of `HEARTS`, in their order, each in a closed loop."""
+
+
+def inotrope(heart: Heart, force: float = 1.45, rate: float = 1.15) -> Heart:
+    """Return the heart under an inotrope: its end-systolic relation steeper and its rate higher by these factors."""
+    return replace(heart, ees_mmhg_per_ml=force * heart.ees_mmhg_per_ml, heart_rate_per_min=rate * heart.heart_rate_per_min)
+
+
 def heart_named(name: str) -> Heart:
     """Return the heart of that name.
 
-    Raises KeyError for a name that neither `HEARTS` nor `UNUSUAL_HEARTS` holds.
+    Raises KeyError for a name that neither `HEARTS`, `UNUSUAL_HEARTS` nor `CLOSED_HEARTS` holds.
     """
-    return {heart.name: heart for heart in HEARTS + UNUSUAL_HEARTS}[name]
+    return {heart.name: heart for heart in HEARTS + UNUSUAL_HEARTS + CLOSED_HEARTS}[name]

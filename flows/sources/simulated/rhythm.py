@@ -24,6 +24,7 @@ class Occlusion:
     """A fall of the filling pressure: exponential from ``onset_s`` towards ``floor`` (a fraction), back after ``deflation_s``.
 
     The way back takes the same time constant: the blood stored between the balloon and the ventricle empties and fills alike.
+    In a closed loop the fraction is that of the veins' cross-section left open, and their conductance goes with its square (Poiseuille).
     ``reflex`` is the fraction by which the heart rate has risen long after, beginning ``reflex_delay_s`` after the onset, and
     ``reflex_force`` that by which the force has.
     """
@@ -43,7 +44,10 @@ class Occlusion:
 
 @dataclass(frozen=True, slots=True)
 class Breathing:
-    """A sinusoidal swing of the filling pressure by ``depth`` (a fraction) and of the cycle length by ``sinus_depth``."""
+    """A sinusoidal swing of the filling pressure by ``depth`` (a fraction) and of the cycle length by ``sinus_depth``.
+
+    In a closed loop it is the pressure in the chest that swings, by that fraction of the heart's filling pressure and the other way.
+    """
 
     rate_per_min: float = 14.0
     depth: float = 0.12
@@ -71,7 +75,8 @@ class Conditions:
     ``rr_spread`` is the relative SD of the cycle length; ``premature_s`` are the instants about which a premature beat falls, at
     ``coupling`` of the heart's own cycle length; ``fibrillating`` replaces the sinus rhythm by an irregular one without an atrial kick,
     its cycles spread by ``irregularity``. The first beat after each of ``aberrant_s`` is on time but conducted another way: a wide
-    complex, and a force of ``aberrant_force``. ``filling_trend_per_s`` lets the filling pressure rise or fall by that fraction a second.
+    complex, and a force of ``aberrant_force``. ``filling_trend_per_s`` lets the filling pressure (in a closed loop the
+    veins' cross-section) rise or fall by that fraction a second.
     An ``injection`` changes what a conductance catheter sees, not the heart.
     """
 

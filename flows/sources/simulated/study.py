@@ -16,7 +16,7 @@ from flows.errors import InputError
 from flows.sources.simulated.acquisition import RECORDING_HOUR, Acquisition, Identity, Recipe, RunPlan, made, rest_and_ramp
 from flows.sources.simulated.cases import CASES, PROTOCOL, SITES, Case, PutIn, TrueIndex
 from flows.sources.simulated.faults import Injected
-from flows.sources.simulated.heart import Heart, heart_named
+from flows.sources.simulated.heart import Heart, heart_named, inotrope
 from flows.sources.simulated.package import date_package, write_package
 from flows.sources.simulated.rhythm import Conditions
 
@@ -92,8 +92,7 @@ def _recipe(case: Case) -> Recipe:
     heart = _individual(heart_named(case.heart), number)
     plans: tuple[RunPlan, ...] = rest_and_ramp()
     if case.has_infusion:
-        stronger = replace(heart, ees_mmhg_per_ml=1.45 * heart.ees_mmhg_per_ml, heart_rate_per_min=1.15 * heart.heart_rate_per_min)
-        plans += rest_and_ramp("infusion", RECORDING_HOUR + 0.4, stronger)
+        plans += rest_and_ramp("infusion", RECORDING_HOUR + 0.4, inotrope(heart))
     runs = tuple(replace(plan, conditions=_conditions(case, plan)) for plan in plans)
     return Recipe(identity, heart, runs, seed=number, **case.recipe)
 
