@@ -129,11 +129,17 @@ VOLUME_MOVED = VOLUME_OFFSET | frozenset(
 """A volume that jumps or drifts inside a run: also every slope against volume. Stroke volume and stroke work are differences within
 beats and move by less than 2 % at 10 mL (computed on simulated hearts)."""
 
-DELAY = frozenset(["SW", "PRSW", "Vw", "PVA", "PE", "efficiency"])
-"""Volume and pressure a few hundredths of a second apart: what is summed around the loop, and what is made of it."""
+DELAY = frozenset(["Ees", "Ees_Ea", "V100", "V120", "PVA", "PE", "efficiency"])
+"""Volume and pressure a few hundredths of a second apart, either way: the slope of end-systolic points, and what is made of it."""
 
-LONG_DELAY = DELAY | VOLUME_GAIN | VOLUME_OFFSET | frozenset({"ESP", "Ees_Ea"})
-"""More than that: also every value of one channel that is read at a landmark of the other."""
+END_SYSTOLE = frozenset(["ESP", "Ea", "EaI", "Ees", "Ees_Ea", "V100", "V120", "PVA", "PE", "efficiency"])
+"""What is read from pressure where the volume says that systole ends."""
+
+PRESSURE_LATE = STEEPEST | frozenset(["SW", "PRSW", "Vw", "PVA", "efficiency"])
+"""A pressure that is late or slow: what is steepest in it, and what is summed around the loop."""
+
+VOLUME_LATE = VOLUME_GAIN | VOLUME_OFFSET | frozenset(["Ees_Ea", "PRSW", "efficiency"])
+"""A volume so late that it is another one at every landmark of pressure."""
 
 STEADY_STATE = frozenset(
     ["EDV", "EDVI", "ESV", "ESVI", "SV", "SVI", "EF", "CO", "CI", "EDP", "ESP", "Pmax", "Ea", "EaI", "SW", "dPdt_max", "dPdt_min"]

@@ -1,10 +1,12 @@
 """Checks on one run as a whole: its time base, its channels, its preload window."""
 
 from checks.run import (
+    aortic_agreement,
     beats_accepted,
     beats_found,
     channel_delay,
     clipping,
+    damping,
     drift,
     duration,
     ecg_leak,
@@ -46,6 +48,11 @@ ALL = (
     drift.VOLUME,
     channel_delay.CHECK,
     channel_delay.GROSS,
+    damping.CHECK,
+    damping.LATE,
+    damping.PEAK,
+    damping.GROSS,
+    aortic_agreement.CHECK,
     steadiness.CHECK,
     respiration.CHECK,
     rhythm.CHECK,

@@ -16,17 +16,28 @@ RANGES = {check.name for check in ALL if check.name.startswith("range-")}
 WIRING = {"pressure-units", "volume-units", "swapped-channels", "pressure-inverted", "volume-inverted", "loop-direction"}
 STANDSTILL = {"pressure-flat", "volume-flat", "pressure-dropout", "volume-dropout"}
 COURSE = {"pressure-step", "volume-step", "pressure-drift", "volume-drift"}
-COURSE |= {"channel-delay", "channel-delay-gross", "steadiness", "respiration-as-declared", "rhythm-as-declared", "segment-phase"}
+COURSE |= {
+    "channel-delay",
+    "channel-delay-gross",
+    "damping",
+    "damping-peak",
+    "pressure-late",
+    "damping-gross",
+    "steadiness",
+    "respiration-as-declared",
+    "rhythm-as-declared",
+    "segment-phase",
+}
 QUIET = {check.name for check in ALL if re.search("hum|noise|quantisation|ringing|ecg-leak|beats-accepted", check.name)}
 GROSS = {"samples-scattered": Verdict.SUSPECT}
 """How the grossest fault of a ladder is judged where that is no fail: a fifth of the samples may go, beat by beat."""
 
 ALSO_FOUND = {
-    "fluid-filled": {"ringing", "channel-delay", "channel-delay-gross"},
+    "fluid-filled": {"ringing", "channel-delay", "damping"},
     "samples-scattered": {"missing-samples"},
     "flat-line": {"loop-closure"} | RANGES,
     "premature-beats": {"loop-closure"},
-    "volume-clipped": {"reference-stroke-volume", "reference-volumes", "pressure-drift", "channel-delay", "channel-delay-gross"},
+    "volume-clipped": {"reference-stroke-volume", "reference-volumes", "pressure-drift", "channel-delay", "channel-delay-gross", "damping"},
     "pressure-in-kpa": {"preload-beats"},
     "volume-times": {"preload-beats", "reference-stroke-volume", "reference-volumes"},
 }

@@ -67,7 +67,18 @@ CHECK = {
     "rhythm-undeclared": "rhythm-as-declared",
     "segment-astray": "segment-phase",
 }
-OTHERS = ("channel-delay", "channel-delay-gross", "steadiness", "respiration-as-declared", "rhythm-as-declared", "segment-phase")
+OTHERS = (
+    "channel-delay",
+    "channel-delay-gross",
+    "damping",
+    "damping-peak",
+    "damping-gross",
+    "pressure-late",
+    "steadiness",
+    "respiration-as-declared",
+    "rhythm-as-declared",
+    "segment-phase",
+)
 
 
 @functools.lru_cache(maxsize=2)
@@ -75,6 +86,12 @@ def climbed(name, heart):
     """The runs of an acquisition, judged at each severity of a fault."""
     acquisition, _ = clean_acquisition(heart, 250.0, 3, salines=0)
     return [judged(LADDERS[name].inject(acquisition, severity).acquisition)[0] for severity in LADDERS[name].severities]
+
+
+def prepared_run_of(name, severity, heart="normal"):
+    """The run at rest with a fault in it."""
+    acquisition, _ = clean_acquisition(heart, 250.0, 3, salines=0)
+    return judged(LADDERS[name].inject(acquisition, severity).acquisition)[0]["rest"].subject
 
 
 def climb(name, heart, run, check):
@@ -113,7 +130,34 @@ def test_a_delay_is_found_once_it_weighs(fault, heart):
         grades = climb(fault, heart, run, "channel-delay")
         assert grades == sorted(grades)
         assert (grades[:3], grades[-2:]) == ([0, 0, 0], [2, 2])
-        assert climb(fault, heart, run, "channel-delay-gross")[-2:] == [2, 2]
+        assert climb(fault, heart, run, "channel-delay-gross")[-1] == (2 if fault == "volume-late" else 0)
+        assert {climb(fault, heart, run, name)[-1] for name in ("damping", "pressure-late")} == {0 if fault == "volume-late" else 2}
+
+
+@pytest.mark.parametrize("fault", ["volume-late", "pressure-late"])
+@pytest.mark.parametrize("heart", ["right", "right-loaded", "right-failing"])
+def test_a_gross_delay_is_found_in_a_right_ventricle_too(fault, heart):
+    for run in ("rest", "ramp-1"):
+        grades = climb(fault, heart, run, "channel-delay")
+        assert grades == sorted(grades)
+        assert (grades[:4], grades[-1]) == ([0, 0, 0, 0], 2)
+
+
+@pytest.mark.parametrize(
+    ("heart", "least"), [("normal", [0, 1, 2, 2, 2, 2]), ("failing", [0, 0, 2, 2, 2, 2]), ("right", [0, 0, 0, 2, 2, 2])]
+)
+def test_a_line_ever_slower_first_spoils_slopes_and_work_then_the_peak_then_all_pressure(heart, least):
+    grades = {name: climb("line-overdamped", heart, "rest", name) for name in ("damping", "damping-peak", "damping-gross")}
+    assert all(found == sorted(found) for found in grades.values())
+    assert all(found >= due for found, due in zip(grades["damping"], least, strict=True))
+    assert grades["damping-peak"][-2:] == [2, 2]
+    assert grades["damping-gross"][-2:] == [0, 2]
+
+
+def test_pressure_that_is_high_at_filling_but_not_late_is_no_more_than_suspect():
+    subject = declared(prepared_run_of("line-overdamped", 7.0), conditions=frozenset({"mitral-regurgitation"}))
+    assert worst(subject, "damping-gross") is Verdict.SUSPECT
+    assert worst(subject, "damping") is Verdict.NOT_EVALUATED
 
 
 def test_a_delay_that_was_declared_is_none():
@@ -128,7 +172,7 @@ def test_a_sound_heart_is_not_even_suspect(heart, conditions):
     assert set(found.values()) <= {Verdict.PASS, Verdict.NOT_EVALUATED}, found
 
 
-@pytest.mark.parametrize("heart", ["mitral-leak", "right", "tricuspid-leak"])
+@pytest.mark.parametrize("heart", ["mitral-leak"])
 def test_valves_and_not_wires_set_the_onset_where_nothing_is_said_of_a_delay(heart):
     assert worst(simulated(heart), "channel-delay") is Verdict.NOT_EVALUATED
 

@@ -16,12 +16,12 @@ def ejecting(onset_s, flow=9000.0, seep=0.0):
 @pytest.mark.parametrize("onset_s", [-0.05, -0.02, 0.0, 0.03, 0.06])
 @pytest.mark.parametrize("flow", [4000.0, 9000.0])
 def test_the_onset_is_where_the_fall_begins_however_fast_it_is(onset_s, flow):
-    assert onset_of_fall_s(ejecting(onset_s, flow), 50.0, RATE_HZ) == pytest.approx(onset_s, abs=0.002)
+    assert onset_of_fall_s(ejecting(onset_s, flow), 100, RATE_HZ) == pytest.approx(onset_s, abs=0.002)
 
 
 def test_a_volume_that_seeps_away_before_has_no_onset():
-    assert np.isnan(onset_of_fall_s(ejecting(0.01, seep=150.0), 70.0, RATE_HZ))
+    assert np.isnan(onset_of_fall_s(ejecting(0.01, seep=150.0), 100, RATE_HZ))
 
 
 def test_a_volume_that_stands_still_has_no_onset():
-    assert np.isnan(onset_of_fall_s(np.full(201, 120.0), 70.0, RATE_HZ))
+    assert np.isnan(onset_of_fall_s(np.full(201, 120.0), 100, RATE_HZ))
