@@ -28,7 +28,8 @@ CONDITIONS = (REST, RAMP, BREATHING_RAMP, SINUS_ARRHYTHMIA, RELEASED, REFLEX, FI
 RECORDERS = ((ORDINARY, 250.0), (QUANTISED, 250.0))
 FAST_AND_COARSE = ((ORDINARY, 1000.0), (QUANTISED, 1000.0), (COARSE, 250.0))
 LOST_SHARE = 0.005
-NAMES = [heart.name for heart in HEARTS]
+CLOSED = ("closed-normal", "closed-small", "closed-failing", "closed-stiff", "closed-right", "closed-right-failing")
+NAMES = [*(heart.name for heart in HEARTS), *CLOSED]
 
 
 @pytest.mark.parametrize("heart", NAMES)
