@@ -15,7 +15,9 @@ from metrics.signals.calibrate import Signals
 from metrics.signals.facts import AcquisitionFacts, PressureCalibration, RunFacts
 from metrics.signals.preload import PreloadWindow, is_at_usual_rate, preload_window
 from metrics.signals.recording import Channel, Recording
+from metrics.signals.saline import SalineIntercept, saline_intercept_of
 from metrics.signals.shifts import Course, LoadPoints, course
+from metrics.signals.stillness import standing
 
 REGURGITATION = frozenset({"mitral-regurgitation", "tricuspid-regurgitation", "aortic-regurgitation", "shunt"})
 """Conditions under which forward stroke volume differs from the ventricle's own."""
@@ -95,6 +97,45 @@ class RunSubject:
             raise ValueError(message)
         return self.recording.channels[name]
 
+    @property
+    def at_rest(self) -> BoolArray:
+        """Return which accepted beats show the heart at rest: all of a steady run, of an occlusion those before its onset."""
+        accepted = np.zeros(0, dtype=bool) if self.accepted is None else self.accepted
+        if self.facts.kind == "preload-reduction":
+            onset_at = 0 if self.window is None else self.window.onset_at
+            return accepted & (np.arange(accepted.size) < onset_at)
+        return accepted
+
+    @cached_property
+    def saline_intercept(self) -> SalineIntercept | None:
+        """Return what a saline run shows of the parallel volume, None for other runs and for one that shows nothing."""
+        if self.facts.kind != "saline" or self.recording is None:
+            return None
+        try:
+            return saline_intercept_of(self.recording, self.facts)
+        except ValueError:
+            return None
+
+    @cached_property
+    def standing(self) -> dict[str, tuple[IntArray, IntArray]]:
+        """Return (first, stop) of the stretches in which pressure and volume, as recorded, stand still as no heart does."""
+        held = {} if self.recording is None else self.recording.channels
+        return {name: standing(held[name].samples, held[name].sampling_rate_hz) for name in ("pressure", "volume") if name in held}
+
+    def longest_standing(self, name: str) -> tuple[FloatArray, FloatArray]:
+        """Return the longest part of such a stretch in each beat, seconds, and when it begins (NaN: none), shapes (n_beats,)."""
+        beats, signals = self.known_beats(), self.known_signals()
+        longest_s, at_s = np.zeros(len(beats)), np.full(len(beats), np.nan)
+        if name not in self.standing:
+            return longest_s, at_s
+        first, stop = self.standing[name]
+        for begin, end in zip(signals.recorded_at[name][first], signals.recorded_at[name][stop - 1], strict=True):
+            inside_s = (np.minimum(end, beats.end) - np.maximum(begin, beats.start)) / signals.sampling_rate_hz
+            longer = inside_s > longest_s
+            longest_s[longer] = inside_s[longer]
+            at_s[longer] = np.maximum(begin, beats.start[longer]) / signals.sampling_rate_hz
+        return longest_s, at_s
+
     def start_s(self) -> FloatArray:
         """Return when each beat begins, seconds from the run's first sample, shape (n_beats,)."""
         return self.known_beats().start / self.known_signals().sampling_rate_hz
@@ -121,8 +162,8 @@ class AcquisitionSubject:
         """Return the pressure calibration of each run, or the acquisition's own where there are no runs."""
         return tuple(run.facts.pressure for run in self.runs) or (self.facts.pressure,)
 
-    def steady_medians(self) -> dict[str, float]:
-        """Return the median ``edv_ml``, ``esv_ml`` and ``sv_ml`` of the accepted beats at rest; NaN without any.
+    def steady_beats(self) -> dict[str, FloatArray]:
+        """Return ``edv_ml``, ``esv_ml`` and ``sv_ml`` of the accepted beats at rest, arrays of one shape (n,).
 
         At rest: the steady runs of the reference stage, else those of the stage the first steady run stands in. What another method
         measured beside a catheter was measured before anything was infused.
@@ -135,5 +176,10 @@ class AcquisitionSubject:
             if run.facts.stage == stage and run.beats is not None and run.accepted is not None:
                 for name, values in parts.items():
                     values.append(getattr(run.beats, name)[run.accepted])
-        joined = {name: np.concatenate(values) if values else np.empty(0) for name, values in parts.items()}
-        return {name: float(np.nanmedian(values)) if np.isfinite(values).any() else float("nan") for name, values in joined.items()}
+        return {name: np.concatenate(values) if values else np.empty(0) for name, values in parts.items()}
+
+    def steady_medians(self) -> dict[str, float]:
+        """Return the medians of `steady_beats`, NaN without any."""
+        return {
+            name: float(np.nanmedian(values)) if np.isfinite(values).any() else float("nan") for name, values in self.steady_beats().items()
+        }

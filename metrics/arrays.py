@@ -9,6 +9,10 @@ FloatArray = NDArray[np.float64]
 IntArray = NDArray[np.int64]
 BoolArray = NDArray[np.bool_]
 
+EDGES_PERCENT = (2.0, 98.0)
+MOST_SAMPLES = 60_000
+"""Percentiles of so many samples, evenly spread, are as good as those of all."""
+
 
 def spans(start: IntArray, stop: IntArray) -> tuple[IntArray, IntArray]:
     """Return (positions, owner): every sample of the half-open spans in order, and which span each belongs to.
@@ -121,3 +125,19 @@ def smallest_step(values: FloatArray) -> float:
     """
     levels = np.unique(values[np.isfinite(values)])
     return float(np.min(np.diff(levels))) if levels.size > 1 else 0.0
+
+
+def span(samples: FloatArray) -> float:
+    """Return how far a signal moves, from its 2nd to its 98th percentile, missing samples left out.
+
+    NaN for one that stands still or is empty.
+
+    >>> span(np.arange(101.0)), span(np.ones(50))
+    (96.0, nan)
+    """
+    thinned = samples[:: max(1, samples.size // MOST_SAMPLES)]
+    thinned = thinned[np.isfinite(thinned)]
+    if thinned.size == 0:
+        return float("nan")
+    low, high = np.percentile(thinned, EDGES_PERCENT)
+    return float(high - low) if high > low else float("nan")

@@ -1,12 +1,13 @@
 """Checks on single beats, vectorised over the beats of a run."""
 
-from checks.beat import cycle_length, duplicated_samples, flat_line, landmarks, loop_closure, missing_samples, ranges
+from checks.beat import cycle_length, duplicated_samples, flat_line, held_signal, landmarks, loop_closure, missing_samples, ranges
 
 ALL = (
     landmarks.CHECK,
     missing_samples.CHECK,
     duplicated_samples.CHECK,
     flat_line.CHECK,
+    held_signal.CHECK,
     cycle_length.PREMATURE,
     cycle_length.AFTER,
     loop_closure.CHECK,

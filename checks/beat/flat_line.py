@@ -12,37 +12,7 @@ import numpy as np
 
 from checks.check import Check, Level, Limits, Measured
 from checks.subject import RunSubject
-from metrics.arrays import BoolArray, FloatArray, IntArray, smallest_step
-
-JUMP_STEPS = 3.0
-
-
-def still_stretches(samples: FloatArray) -> tuple[IntArray, IntArray]:
-    """Return (first, stop) of every stretch of at least three identical samples, half open.
-
-    >>> still_stretches(np.array([1.0, 2.0, 2.0, 2.0, 3.0]))
-    (array([1]), array([4]))
-    """
-    same = np.concatenate([[False], np.diff(samples) == 0.0, [False]])
-    edges = np.flatnonzero(np.diff(same.astype(np.int8)))
-    first, stop = edges[::2], edges[1::2] + 1
-    long = stop - first >= 3
-    return first[long], stop[long]
-
-
-def has_jump(samples: FloatArray, first: IntArray, stop: IntArray) -> BoolArray:
-    """Return which stretches were entered or left by more than three of the channel's steps, or lie at its edge; shape of ``first``.
-
-    >>> steps = np.array([0.0, 1.0, 1.0, 1.0, 2.0, 2.0, 2.0, 9.0])
-    >>> has_jump(steps, np.array([1, 4]), np.array([4, 7])).tolist()
-    [False, True]
-    """
-    widest = JUMP_STEPS * smallest_step(samples)
-    entered = np.abs(samples[first] - samples[np.maximum(first - 1, 0)])
-    left = np.abs(samples[np.minimum(stop, samples.size - 1)] - samples[stop - 1])
-    # not "greater than": beside a missing sample the difference is no number, and that is no way a plateau ends
-    jumped: BoolArray = ~(entered <= widest) | ~(left <= widest) | (first == 0) | (stop == samples.size)
-    return jumped
+from metrics.signals.stillness import has_jump, still_stretches
 
 
 def still_share(subject: RunSubject) -> Measured:

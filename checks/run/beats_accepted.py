@@ -2,7 +2,7 @@
 
 A beat is rejected for itself, but where most of them are, what is left was chosen by chance: with white noise of 30 mmHg some three
 beats in ten slip through every check, and none of their numbers is right (computed). The median of a minority is no median of the run.
-Beats that were lost with their samples say nothing against the others, so they do not count.
+Beats that were lost with their samples, or while a channel stood still, say nothing against the others, so they do not count.
 """
 
 from __future__ import annotations
@@ -12,17 +12,28 @@ import numpy as np
 from checks.check import Check, Level, Limits, Measured, single
 from checks.spoils import EVERYTHING
 from checks.subject import RunSubject
+from metrics.arrays import BoolArray
+
+LEAST_BEATS = 5
+"""As many as a breath holds at rest: the fewest whose median stands for a heart that breathes; house default."""
+
+
+def holds_gap(subject: RunSubject) -> BoolArray:
+    """Return which beats hold a missing sample, shape (n_beats,)."""
+    beats, lost = subject.known_beats(), np.concatenate([[0], np.cumsum(subject.known_signals().missing)])
+    gaps: BoolArray = lost[beats.end] > lost[beats.start]
+    return gaps
 
 
 def accepted_share(subject: RunSubject) -> Measured:
-    """Return the share of a run's beats that were accepted, shape (); beats rejected while samples are missing do not count.
+    """Return the share of a run's beats that were accepted, shape (); beats rejected while samples are missing or held do not count.
 
     NaN where no beat counts.
     """
     if subject.accepted is None or subject.accepted.size == 0:
         return single(np.nan)
-    beats, lost = subject.known_beats(), np.concatenate([[0], np.cumsum(subject.known_signals().missing)])
-    counts = subject.accepted | (lost[beats.end] == lost[beats.start])
+    held = [subject.longest_standing(name)[0] > 0.0 for name in ("pressure", "volume")]
+    counts = subject.accepted | ~(holds_gap(subject) | held[0] | held[1])
     return single(float(np.mean(subject.accepted[counts])) if counts.any() else np.nan)
 
 

@@ -15,14 +15,19 @@ from checks.subject import RunSubject
 WHOLE_SECOND_S = 1.0
 
 
-def duration_error(subject: RunSubject) -> Measured:
-    """Return how much recorded and declared duration differ beyond one second, over the declared one; shape (); NaN undeclared."""
+def duration_ratio(subject: RunSubject) -> float:
+    """Return declared over recorded duration, above 1 where the samples' clock is too fast; NaN undeclared."""
     declared_s = subject.facts.duration_s
     if declared_s is None or declared_s <= 0.0:
-        return single(np.nan)
+        return float("nan")
     signals = subject.known_signals()
-    recorded_s = signals.pressure_mmhg.size / signals.sampling_rate_hz
-    return single(max(abs(recorded_s - declared_s) - WHOLE_SECOND_S, 0.0) / declared_s)
+    return declared_s * signals.sampling_rate_hz / signals.pressure_mmhg.size
+
+
+def duration_error(subject: RunSubject) -> Measured:
+    """Return how much recorded and declared duration differ beyond one second, over the declared one; shape (); NaN undeclared."""
+    departure = abs(1.0 / duration_ratio(subject) - 1.0)
+    return single(np.nan if np.isnan(departure) else max(departure - WHOLE_SECOND_S / float(subject.facts.duration_s or np.nan), 0.0))
 
 
 CHECK = Check(

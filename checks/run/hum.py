@@ -16,10 +16,9 @@ import numpy as np
 from numpy.typing import NDArray
 
 from checks.check import Check, Level, Limits, Measured, single
-from checks.run.units import span
 from checks.spoils import END_DIASTOLE, PRESSURE_EXTREMES, STEEPEST, VOLUME_SHAPE
 from checks.subject import RunSubject
-from metrics.arrays import FloatArray
+from metrics.arrays import FloatArray, span
 from metrics.signals.filters import slope_per_s, zero_phase
 from metrics.signals.recording import Channel
 

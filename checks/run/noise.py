@@ -14,9 +14,9 @@ import numpy as np
 
 from checks.check import Check, Level, Limits, Measured, single
 from checks.run.hum import MAINS_HZ, line_amplitude, passed, shown_at_hz, stretches
-from checks.run.units import span
 from checks.spoils import PRESSURE_EXTREMES, STEEPEST, VOLUME_SHAPE
 from checks.subject import RunSubject
+from metrics.arrays import span
 from metrics.signals.filters import slope_per_s, steadied, zero_phase
 from metrics.signals.recording import Channel
 

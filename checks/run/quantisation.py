@@ -12,10 +12,9 @@ import math
 import numpy as np
 
 from checks.check import Check, Level, Limits, Measured, single
-from checks.run.units import span
 from checks.spoils import END_DIASTOLE, PRESSURE_EXTREMES, STEEPEST, VOLUME_SHAPE
 from checks.subject import RunSubject
-from metrics.arrays import FloatArray
+from metrics.arrays import FloatArray, span
 
 
 def converter_step(samples: FloatArray) -> float:

@@ -17,10 +17,9 @@ import numpy as np
 from checks.check import Check, Level, Limits, Measured, single
 from checks.run.hum import MAINS_HZ, shown_at_hz
 from checks.run.quantisation import step_share
-from checks.run.units import span
 from checks.spoils import PRESSURE_EXTREMES, STEEPEST
 from checks.subject import RunSubject
-from metrics.arrays import FloatArray
+from metrics.arrays import FloatArray, span
 
 AFTER_S = (0.050, 0.250)
 BEFORE_NEXT_S = 0.100

@@ -2,7 +2,7 @@
 
 A beating heart never leaves a channel at one value: noise alone moves it. A plug that came out leaves a channel flat for good; a
 transmitter out of reach leaves pieces of a held value. Both are the same measure over stretches of different length, and beats that
-hold such a piece are rejected one by one; the run fails where little is left.
+hold such a piece are rejected one by one; the run fails where most of it is gone and fewer than five beats are left.
 
 A coarse converter draws plateaus in health, and a volume without noise stands still while the valves are shut, but both arrive and
 leave gently: a short stretch counts only when it begins or ends with a jump of more than three steps of the converter and 3 % of what the
@@ -13,56 +13,32 @@ from __future__ import annotations
 
 import numpy as np
 
-from checks.beat.flat_line import has_jump, still_stretches
-from checks.check import Check, Level, Limits, Measured, single
-from checks.run.units import span
+from checks.check import Check, Level, Limits, Measured
+from checks.run.beats_accepted import LEAST_BEATS
 from checks.spoils import EVERYTHING, VOLUME_SHAPE
 from checks.subject import RunSubject
-from metrics.arrays import BoolArray, FloatArray, IntArray
-
-HELD_S = 0.100
-"""Shorter pieces are plateaus of any converter; house default."""
-
-PAUSE_S = 1.5
-"""Longer than any diastole but that of an asystole; house default."""
-
-LEAST_JUMP = 0.03
-"""Of the channel's span: more than an upstroke or an ejection begins with between two samples at 250 Hz; house default."""
 
 FLAT_S = 3.0
 """No heart that is being measured stands still for so long; house default."""
 
 
-def is_broken_off(samples: FloatArray, first: IntArray, stop: IntArray) -> BoolArray:
-    """Return which stretches begin or end with a jump no heart makes, or lie at an edge; shape of ``first``.
-
-    >>> wave = np.concatenate([np.zeros(5), np.arange(0.0, 100.0), np.full(5, 20.0), np.arange(20.0, 0.0, -1.0)])
-    >>> is_broken_off(wave, np.array([1, 105]), np.array([5, 110])).tolist()
-    [False, True]
-    """
-    least = LEAST_JUMP * float(np.nan_to_num(span(samples)))
-    entered = np.abs(samples[first] - samples[np.maximum(first - 1, 0)])
-    left = np.abs(samples[np.minimum(stop, samples.size - 1)] - samples[stop - 1])
-    at_edge = (first == 0) | (stop == samples.size)
-    broken: BoolArray = at_edge | (((entered > least) | (left > least)) & has_jump(samples, first, stop))
-    return broken
-
-
 def still_share(subject: RunSubject, name: str, *, flat: bool) -> Measured:
     """Return the share of a channel's samples in still stretches, and when the first begins, shape ().
 
-    Stretches of 3 s and more where ``flat``, else those of 0.1 to 3 s that are broken off or outlast a diastole.
+    Stretches of 3 s and more where ``flat``, else shorter ones that are broken off or outlast a diastole. Borne out where fewer beats
+    than make a median are free of any.
     """
     channel = subject.channel(name)
-    first, stop = still_stretches(channel.samples)
-    length_s = (stop - first) / channel.sampling_rate_hz
-    chosen = length_s >= FLAT_S if flat else (length_s >= HELD_S) & (length_s < FLAT_S)
+    first, stop = subject.standing[name]
+    chosen = (stop - first >= FLAT_S * channel.sampling_rate_hz) == flat
     first, stop = first[chosen], stop[chosen]
-    if not flat and first.size:
-        held = is_broken_off(channel.samples, first, stop) | ((stop - first) / channel.sampling_rate_hz >= PAUSE_S)
-        first, stop = first[held], stop[held]
     share = float(np.sum(stop - first)) / max(channel.samples.size, 1)
-    return single(share, float(first[0]) / channel.sampling_rate_hz if first.size else np.nan)
+    left = 0 if subject.beats is None or subject.signals is None else int(np.sum(subject.longest_standing(name)[0] == 0.0))
+    return Measured(
+        np.array(share),
+        np.array(float(first[0]) / channel.sampling_rate_hz if first.size else np.nan),
+        np.array(left < LEAST_BEATS),
+    )
 
 
 def flat_pressure(subject: RunSubject) -> Measured:

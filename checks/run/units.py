@@ -8,32 +8,10 @@ A channel that does not move at all is not evaluated; that is another check's.
 
 from __future__ import annotations
 
-import numpy as np
-
 from checks.check import Check, Level, Limits, Measured, single
 from checks.spoils import PRESSURE_GAIN, PRESSURE_OFFSET, VOLUME_GAIN, VOLUME_OFFSET
 from checks.subject import RunSubject
-from metrics.arrays import FloatArray
-
-EDGES_PERCENT = (2.0, 98.0)
-MOST_SAMPLES = 60_000
-"""Percentiles of so many samples, evenly spread, are as good as those of all."""
-
-
-def span(samples: FloatArray) -> float:
-    """Return how far a signal moves, from its 2nd to its 98th percentile, missing samples left out.
-
-    NaN for one that stands still or is empty.
-
-    >>> span(np.arange(101.0)), span(np.ones(50))
-    (96.0, nan)
-    """
-    thinned = samples[:: max(1, samples.size // MOST_SAMPLES)]
-    thinned = thinned[np.isfinite(thinned)]
-    if thinned.size == 0:
-        return float("nan")
-    low, high = np.percentile(thinned, EDGES_PERCENT)
-    return float(high - low) if high > low else float("nan")
+from metrics.arrays import span
 
 
 def pressure_span(subject: RunSubject) -> Measured:

@@ -16,10 +16,9 @@ from enum import Enum
 import numpy as np
 
 from checks.check import Check, Level, Limits, Measured, single
-from checks.run.units import span
 from checks.spoils import EVERYTHING, VOLUME_SHAPE
 from checks.subject import RunSubject
-from metrics.arrays import FloatArray, IntArray
+from metrics.arrays import FloatArray, IntArray, span
 from metrics.signals.calibrate import Signals
 from metrics.signals.r_waves import r_waves
 

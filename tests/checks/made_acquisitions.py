@@ -28,7 +28,7 @@ RUNS = (
     RunPlan("rest", Conditions(duration_s=20.0), 0.35),
     RunPlan("ramp", Conditions(duration_s=12.0, occlusion=Occlusion(onset_s=3.0)), 0.45),
 )
-UNITS = {"pressure": "mm[Hg]", "volume": "mL", "ecg": "mV"}
+UNITS = {"pressure": "mm[Hg]", "volume": "mL", "ecg": "mV", "aortic_pressure": "mm[Hg]"}
 OWN_LIMITS = Rules({})
 
 

@@ -158,6 +158,7 @@ EXPECTED = {
     "sampling-rate": spoils.TIME_SCALE,
     "duration": spoils.TIME_SCALE,
     "heart-rate-agreement": spoils.TIME_SCALE,
+    "clock-agreement": spoils.TIME_SCALE,
     "pressure-clipping": spoils.PRESSURE_SHAPE,
     "volume-clipping": spoils.VOLUME_SHAPE,
     "pressure-units": spoils.PRESSURE_GAIN | spoils.PRESSURE_OFFSET,

@@ -4,7 +4,7 @@ from itertools import pairwise
 import numpy as np
 import pytest
 
-from checks.beat.flat_line import still_stretches
+from metrics.signals.stillness import still_stretches
 from checks.check import Verdict
 from checks.subject import RunSubject
 from checks.verdicts import Rules, sentence

@@ -2,11 +2,11 @@ import numpy as np
 import pytest
 
 from checks.check import Verdict
-from checks.run.units import span
 from checks.run.wiring import Fault, loop_direction, wiring
 from checks.subject import RunSubject
 from flows.sources.simulated.corpus import clean_acquisition
 from flows.sources.simulated.ladders import RUN_LADDERS
+from metrics.arrays import span
 from metrics.signals.recording import Recording
 from tests.checks.made_acquisitions import judged
 from tests.checks.made_subjects import BREATHING_RAMP, FIBRILLATING, RAMP, REST, prepared, rerecorded, simulated, worst
