@@ -85,6 +85,20 @@ def read_indices(acquisition: Acquisition, pressure_late_s: float = 0.0) -> Indi
     return found
 
 
+def read_beats(acquisition: Acquisition, pressure_late_s: float = 0.0) -> dict[str, dict[str, FloatArray]]:
+    """Return what the signals say of every beat by run and index, arrays of shape (n_beats,), to a reader as in `read_indices`.
+
+    End-systole is looked for from the heart's true V0; a beat that cannot be read is NaN.
+    """
+    with np.errstate(all="ignore"):
+        return {
+            plan.run: _ReadRun(acquisition, plan.run, pressure_late_s).beat_values(
+                (plan.heart or acquisition.recipe.heart).v0_ml, only_sound=False
+            )
+            for plan in acquisition.recipe.runs
+        }
+
+
 def _stages(acquisition: Acquisition) -> dict[str, list[RunPlan]]:
     stages: dict[str, list[RunPlan]] = {}
     for plan in acquisition.recipe.runs:
