@@ -16,7 +16,7 @@ from flows.sources.simulated.acquisition import ECG, PRESSURE, TIME, VOLUME, Acq
 from flows.sources.simulated.activation import FloatArray
 from flows.sources.simulated.declared import declared_run
 from flows.sources.simulated.faults import Expected, Injected, with_columns
-from flows.sources.simulated.heart import HEARTS
+from flows.sources.simulated.heart import CLOSED_HEARTS, HEARTS
 from flows.sources.simulated.truth import BeatTruth
 
 
@@ -74,7 +74,8 @@ def _joined(before: BeatTruth, after: BeatTruth, cut_s: float) -> BeatTruth:
 def subject_swapped(acquisition: Acquisition, share: float) -> Injected:
     """Send the signals of another subject for ``share`` of the runs, the first ones first. Made anew for the other subject."""
     recipe = acquisition.recipe
-    kin = [heart for heart in HEARTS if heart.chamber == recipe.heart.chamber]
+    own = recipe.heart
+    kin = [heart for heart in HEARTS + CLOSED_HEARTS if heart.chamber == own.chamber and (heart.veins is None) == (own.veins is None)]
     names = [heart.name for heart in kin]
     place = names.index(recipe.heart.name) if recipe.heart.name in names else 0
     name = f"{recipe.identity.subject}-other"

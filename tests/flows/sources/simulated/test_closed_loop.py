@@ -4,6 +4,7 @@ import numpy as np
 import pytest
 
 from flows.sources.simulated.circulation import solve
+from flows.sources.simulated.corpus import clean_acquisition, hearts
 from flows.sources.simulated.heart import CLOSED_HEARTS, HEARTS, heart_named
 from flows.sources.simulated.rhythm import STEP_S, Breathing, Conditions, Occlusion
 from flows.sources.simulated.truth import run_truth
@@ -46,6 +47,15 @@ def test_each_heart_has_a_twin_and_the_twin_the_same_ventricle():
         assert replace(closed, **same) == twin
         assert REST[closed.name].loop is not None
     assert solve(HEARTS[0], Conditions(duration_s=1.0)).loop is None
+
+
+def test_every_third_heart_of_a_study_is_in_a_closed_loop():
+    twelve = hearts(12)
+    assert [heart.veins is not None for heart in twelve] == [False, False, True] * 4
+    assert {heart.chamber for heart in twelve if heart.veins is not None} == {"LV", "RV"}
+    acquisition, truth = clean_acquisition("closed-small", 250.0, 1, ramps=1, salines=1)
+    assert {run["kind"] for run in acquisition.manifest["runs"]} == {"steady", "preload-reduction", "saline"}
+    assert truth["baseline", "Ees"] == heart_named("small").ees_mmhg_per_ml
 
 
 @pytest.mark.parametrize("heart", EVERY)
