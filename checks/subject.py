@@ -13,6 +13,7 @@ from metrics.indices.end_systole import end_systole
 from metrics.signals.beats import Beats
 from metrics.signals.calibrate import Signals
 from metrics.signals.facts import AcquisitionFacts, PressureCalibration, RunFacts
+from metrics.signals.mains import Mains, mains
 from metrics.signals.preload import PreloadWindow, is_at_usual_rate, preload_window
 from metrics.signals.recording import Channel, Recording
 from metrics.signals.saline import SalineIntercept, saline_intercept_of
@@ -97,6 +98,17 @@ class RunSubject:
             raise ValueError(message)
         return self.recording.channels[name]
 
+    def mains(self, name: str) -> Mains:
+        """Return how much of the mains a channel holds; raises ValueError when the run does not hold the channel."""
+        if name not in self._mains:
+            channel = self.channel(name)
+            self._mains[name] = mains(channel.samples, channel.sampling_rate_hz, self.facts.chamber)
+        return self._mains[name]
+
+    @cached_property
+    def _mains(self) -> dict[str, Mains]:
+        return {}
+
     @property
     def at_rest(self) -> BoolArray:
         """Return which accepted beats show the heart at rest: all of a steady run, of an occlusion those before its onset."""
@@ -152,11 +164,16 @@ class RunSubject:
 
 @dataclass(frozen=True)
 class AcquisitionSubject:
-    """One acquisition with its runs, after these were judged; ``spoiled`` holds the indices that failed checks of a run reach, by run."""
+    """One acquisition with its runs, after these were judged; ``spoiled`` holds the indices that failed checks of a run reach, by run.
+
+    At the end of a night ``rested`` holds its published indices by (index, stage), ``earlier`` those of the subject's earlier ones.
+    """
 
     facts: AcquisitionFacts
     runs: tuple[RunSubject, ...] = ()
     spoiled: Mapping[str, frozenset[str]] = field(default_factory=dict)
+    rested: Mapping[tuple[str, str | None], float] = field(default_factory=dict)
+    earlier: tuple[Mapping[tuple[str, str | None], float], ...] = ()
 
     def pressure_calibrations(self) -> tuple[PressureCalibration, ...]:
         """Return the pressure calibration of each run, or the acquisition's own where there are no runs."""

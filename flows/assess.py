@@ -14,6 +14,7 @@ from checks.subject import AcquisitionSubject, RunSubject
 from checks.verdicts import Rules, doubted, judge_acquisition, judge_run
 from flows.assessed_rows import acquisition_row, beat_rows, measure_rows, rejection_rows, run_row
 from flows.channel_sums import channel_rows
+from flows.corrections import calibrated_run, whole_of, with_reference_gain, without_estimated_delay
 from flows.errors import InputError
 from flows.evidence import evidence_of
 from flows.facts import acquisition_facts, run_facts
@@ -21,8 +22,6 @@ from flows.sources.read import read_run
 from flows.stage_indices import index_rows, stage_v0_ml, stages_of
 from flows.study.manifest import MANIFEST_NAME, Manifest, ManifestRun
 from flows.study.protocol import Protocol
-from metrics.signals.calibrate import calibrated
-from metrics.signals.landmarks import beats_of
 
 Row = dict[str, object]
 
@@ -57,9 +56,13 @@ def assess(files: Mapping[str, Path], manifest: Manifest, protocol: Protocol) ->
         problem = "no run can be read: " + "; ".join(str(subject.trouble).rstrip(".") for subject in subjects)
         raise InputError(problem, file=MANIFEST_NAME, field="runs", remedy="Correct the files and send the package again.")
     runs = [judge_run(subject, CHECKS, rules) for subject in subjects]
+    if protocol.policy.correct_estimated_delay:
+        runs = [without_estimated_delay(run, rules) for run in runs]
     facts = acquisition_facts(manifest, protocol)
-    whole = AcquisitionSubject(facts, tuple(run.subject for run in runs), {run.subject.facts.run: run.spoiled for run in runs})
+    whole = whole_of(AcquisitionSubject(facts), runs)
     judged, told = judge_acquisition(whole, CHECKS, rules)
+    if protocol.policy.alpha_from_reference:
+        runs, whole, judged, told = with_reference_gain((runs, whole, judged, told), rules)
     runs = [doubted(run, told) for run in runs]
     findings = tuple(finding for finding in told if finding.run is None)
     failed = tuple(finding.check for finding in findings if finding.decisive)
@@ -90,19 +93,10 @@ def rules_of(protocol: Protocol) -> Rules:
 
 
 def prepared_run(files: Mapping[str, Path], manifest: Manifest, run: ManifestRun) -> RunSubject:
-    """Return one run read, calibrated and cut into beats; what stopped it stands in ``trouble``.
-
-    Saline runs are read but not cut: they carry no pressure, and calibrate volumes instead of being judged.
-    """
+    """Return one run read, calibrated and cut into beats; what stopped it stands in ``trouble``."""
     facts = run_facts(manifest, run)
     try:
         recording = read_run(files, manifest, run)
     except InputError as error:
         return RunSubject(facts, None, trouble=str(error))
-    if facts.kind == "saline":
-        return RunSubject(facts, recording)
-    try:
-        signals = calibrated(recording, facts)
-    except ValueError as error:
-        return RunSubject(facts, recording, trouble=f"run {run.run}: {error}")
-    return RunSubject(facts, recording, signals, beats_of(signals, facts.chamber))
+    return calibrated_run(recording, facts)

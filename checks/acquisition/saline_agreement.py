@@ -12,8 +12,8 @@ from scipy import stats
 
 from checks.check import Check, Level, Limits, Measured, single
 from checks.spoils import VOLUME_OFFSET
-from checks.subject import AcquisitionSubject, RunSubject
-from metrics.signals.saline import SalineIntercept, saline_intercept_of
+from checks.subject import AcquisitionSubject
+from metrics.signals.saline import SalineIntercept
 
 
 def uncertainty_ml(found: list[SalineIntercept]) -> float:
@@ -33,31 +33,24 @@ def uncertainty_ml(found: list[SalineIntercept]) -> float:
     return float(stats.t.ppf(0.975, freedom)) * max(within, between) + apart
 
 
+def saline_shift_ml(subject: AcquisitionSubject) -> tuple[float, float] | None:
+    """Return how much too large volumes are by the saline runs, and the half width of that, mL; None where nothing shows it."""
+    shown = [(run.saline_intercept, run.facts.volume) for run in subject.runs]
+    both = [(found, volume, volume.alpha_vc_ml) for found, volume in shown if found is not None and volume.alpha_vc_ml is not None]
+    if not both:
+        return None
+    alpha = float(np.mean([1.0 if volume.alpha is None else volume.alpha for _, volume, _ in both]))
+    gap_ml = float(np.mean([found.ml - declared_ml for found, _, declared_ml in both]))
+    return gap_ml / alpha, uncertainty_ml([found for found, _, _ in both]) / alpha
+
+
 def saline_gap(subject: AcquisitionSubject) -> Measured:
     """Return how far the declared offset lies beyond the runs' uncertainty, over end-diastolic volume, shape (); NaN without both."""
     edv_ml = subject.steady_medians()["edv_ml"]
-    found: list[SalineIntercept] = []
-    gaps_ml, alphas = [], []
-    for run in subject.runs:
-        intercept = _intercept(run)
-        if intercept is not None and run.facts.volume.alpha_vc_ml is not None:
-            found.append(intercept)
-            gaps_ml.append(intercept.ml - run.facts.volume.alpha_vc_ml)
-            alphas.append(1.0 if run.facts.volume.alpha is None else run.facts.volume.alpha)
-    if not found or not edv_ml > 0.0:
+    shift = saline_shift_ml(subject)
+    if shift is None or not edv_ml > 0.0:
         return single(np.nan)
-    beyond_ml = max(abs(float(np.mean(gaps_ml))) - uncertainty_ml(found), 0.0)
-    return single(beyond_ml / float(np.mean(alphas)) / edv_ml)
-
-
-def _intercept(run: RunSubject) -> SalineIntercept | None:
-    """Return what a saline run shows, None for other runs and for one that shows nothing."""
-    if run.facts.kind != "saline" or run.recording is None:
-        return None
-    try:
-        return saline_intercept_of(run.recording, run.facts)
-    except ValueError:
-        return None
+    return single(max(abs(shift[0]) - shift[1], 0.0) / edv_ml)
 
 
 CHECK = Check(

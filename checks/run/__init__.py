@@ -1,6 +1,7 @@
 """Checks on one run as a whole: its time base, its channels, its preload window."""
 
 from checks.run import (
+    aortic_agreement,
     beats_accepted,
     beats_found,
     channel_delay,
@@ -58,6 +59,7 @@ ALL = (
     damping.LATE,
     damping.PEAK,
     damping.GROSS,
+    aortic_agreement.CHECK,
     steadiness.CHECK,
     respiration.CHECK,
     rhythm.CHECK,
@@ -74,6 +76,7 @@ ALL = (
     standstill.HELD_VOLUME,
     hum.DIASTOLE,
     hum.PRESSURE,
+    hum.END_SYSTOLIC,
     hum.SLOPE,
     hum.VOLUME,
     noise.PRESSURE,

@@ -38,17 +38,25 @@ V0_ML = 3.0
 
 PROTOCOL = parse_protocol(
     b'[study]\nname = "tarn"\nversion = "1"\n[sites.harbour]\ntimezone = "Europe/Lisbon"\n'
-    b'[[visits]]\nname = "visit-1"\nrequired_runs = ["steady", "preload-reduction"]\n',
+    b'[[visits]]\nname = "visit-1"\nrequired_runs = ["steady", "preload-reduction"]\n'
+    b"[limits.pressure-points]\nfail_below = 2\n",
     file="protocol.toml",
 )
 LADDERS = {("acquisition", ladder.name): ladder for ladder in ACQUISITION_LADDERS} | {
     ("run", ladder.name): ladder for ladder in RUN_LADDERS
 }
 
-EVIDENCE_TAKEN = {"zero-missing", "points-missing"}
+EVIDENCE_TAKEN = {"zero-missing", "points-missing", "alpha-missing", "alpha-vc-missing", "fluid-filled"}
 """Faults that take away what would tell how large they are: withholding is right at each severity for what the grossest reaches."""
-LOOKS_LIKE = {"reference-gain-wrong": "alpha-wrong", "reference-offset-wrong": "alpha-vc-wrong", "saline-disagrees": "alpha-vc-wrong"}
+LOOKS_LIKE = {
+    "reference-gain-wrong": "alpha-wrong",
+    "reference-offset-wrong": "alpha-vc-wrong",
+    "saline-disagrees": "alpha-vc-wrong",
+    "replicate-shifted": "alpha-vc-wrong",
+}
 """Faults of a witness, and the fault of the volumes that contradicts it in the same way: withholding is right for what that reaches."""
+IN_SOME_RUNS = {"pressure-sent-in-cmh2o", "volume-calibrated-twice"}
+"""Faults by which runs contradict each other: which are right cannot be told, so withholding is for what all could reach."""
 SLOPES = frozenset({"Ees", "V0", "Ees_Ea", "PRSW"})
 COPIES = {
     "run-copied": SLOPES,
@@ -220,7 +228,7 @@ def _is_sent_twice(found: Assessment | None, other: Assessment | None) -> bool:
 
 def _doubtful(case: Case, acquisition: Acquisition, twin: Mapping[tuple[str, str], _Published]) -> set[tuple[str, str]]:
     """Return the indices nobody can tell to be sound, though they may be: the evidence is gone, or a witness contradicts them."""
-    if case.fault in EVIDENCE_TAKEN:
+    if case.fault in EVIDENCE_TAKEN or (case.fault in IN_SOME_RUNS and case.severity):
         told = reached(acquisition, case.ladder, case.ladder.severities[-1])
     elif case.fault in COPIES:
         own = COPIES[case.fault]

@@ -7,7 +7,7 @@ import pytest
 from checks import ALL
 from checks.check import Level, Verdict
 from flows.sources.simulated.corpus import clean_acquisition
-from flows.sources.simulated.ladders import ACQUISITION_LADDERS, LADDERS
+from flows.sources.simulated.ladders import ACQUISITION_LADDERS, LADDERS, RUN_LADDERS
 from tests.checks.made_acquisitions import judged, sound
 from tests.checks.made_subjects import CHECKS, beats_at
 
@@ -114,6 +114,8 @@ def test_nothing_cries_out_that_the_fault_does_not_break(climbed):
 def test_every_check_has_a_ladder():
     climbs = {expected.check for ladder in LADDERS for expected in ladder.inject(sound(), ladder.severities[-1]).expected}
     whole, _ = clean_acquisition("normal")
-    climbs |= {expected.check for ladder in ACQUISITION_LADDERS for expected in ladder.inject(whole, ladder.severities[-1]).expected}
+    of_runs = [ladder for ladder in RUN_LADDERS if ladder.name in {"pressure-sent-in-cmh2o", "volume-calibrated-twice"}]
+    for ladder in (*ACQUISITION_LADDERS, *of_runs):
+        climbs |= {expected.check for expected in ladder.inject(whole, ladder.severities[-1]).expected}
     assert climbs | set(ELSEWHERE) == set(CHECKS)
     assert all(check.level is not Level.ACQUISITION for check in ALL if check.name in ELSEWHERE)

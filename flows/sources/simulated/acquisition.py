@@ -19,8 +19,8 @@ from flows.sources.simulated.truth import RunTruth
 Facts = dict[str, Any]
 """A table of acquisition.json as it will be written: texts, numbers, lists and tables."""
 
-TIME, PRESSURE, VOLUME, ECG = "t_s", "p_ventricle", "v_ventricle", "ecg"
-DECIMALS = {TIME: 4, PRESSURE: 2, VOLUME: 2, ECG: 3}
+TIME, PRESSURE, VOLUME, ECG, AORTA = "t_s", "p_ventricle", "v_ventricle", "ecg", "p_aorta"
+DECIMALS = {TIME: 4, PRESSURE: 2, VOLUME: 2, ECG: 3, AORTA: 2}
 
 RECORDING_HOUR = 0.35
 ZERO_AFTER_HOUR = 1.25
@@ -56,7 +56,7 @@ class Recipe:
 
     ``raw_volume`` writes the volume before its calibration and declares gain and parallel volume; ``reference`` names the method
     that measured volumes beside it, None where there was none; ``with_time`` writes a column of time stamps. ``points_mmhg`` are the
-    pressures applied to calibrate the sensor.
+    pressures applied to calibrate the sensor; ``with_aorta`` records the pressure behind the outlet valve with another sensor.
     """
 
     identity: Identity
@@ -71,6 +71,7 @@ class Recipe:
     reference: str | None = "CMR"
     bsa_m2: float | None = 1.9
     points_mmhg: tuple[int, ...] = (0, 100)
+    with_aorta: bool = False
 
 
 @dataclass(frozen=True, slots=True)
@@ -129,7 +130,8 @@ def _columns(run: RecordedRun, recipe: Recipe) -> dict[str, FloatArray]:
     signals = run.signals
     columns = {TIME: signals.time_s} if recipe.with_time else {}
     columns |= {PRESSURE: signals.pressure_mmhg, VOLUME: signals.volume_ml}
-    return columns | ({ECG: signals.ecg_mv} if recipe.with_ecg else {})
+    columns |= {ECG: signals.ecg_mv} if recipe.with_ecg else {}
+    return columns | ({AORTA: signals.aortic_pressure_mmhg} if recipe.with_aorta else {})
 
 
 def _at(recipe: Recipe, hour: float) -> str:
@@ -221,4 +223,5 @@ def _channels(recipe: Recipe) -> Facts:
         pressure["delay_ms"] = round(1000.0 * catheter.pressure_delay_s, 3)
     channels: Facts = {"time": {"column": TIME, "unit": "s"}} if recipe.with_time else {}
     channels |= {"pressure": pressure, "volume": volume}
-    return channels | ({"ecg": {"column": ECG, "unit": "mV"}} if recipe.with_ecg else {})
+    channels |= {"ecg": {"column": ECG, "unit": "mV"}} if recipe.with_ecg else {}
+    return channels | ({"aortic_pressure": {"column": AORTA, "unit": "mm[Hg]"}} if recipe.with_aorta else {})

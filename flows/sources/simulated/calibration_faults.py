@@ -58,12 +58,12 @@ def _raised_before(acquisition: Acquisition, mmhg: float) -> Acquisition:
 
 
 def points_missing(acquisition: Acquisition, excess: float) -> Injected:
-    """Let the pressure sensor show ``excess`` (a fraction) too much and leave no points that would tell."""
+    """Let the pressure sensor show ``excess`` (a fraction) too much and leave no points that would tell, unless an aortic one does."""
 
     def change(manifest: Facts) -> None:
         manifest["calibration"]["pressure"].pop("points")
 
-    return Injected(with_facts(scaled(acquisition, PRESSURE, 1.0 + excess), change), (Expected("pressure-gain"),))
+    return Injected(with_facts(scaled(acquisition, PRESSURE, 1.0 + excess), change), (Expected("pressure-points"),))
 
 
 def pressure_bent(acquisition: Acquisition, mmhg: float) -> Injected:
@@ -126,6 +126,19 @@ def calibration_stale(acquisition: Acquisition, hours: float) -> Injected:
     return Injected(with_facts(broken, volume_facts(change)), (Expected("calibration-age"),))
 
 
+def calibration_stale_without_saline(acquisition: Acquisition, hours: float) -> Injected:
+    """Let the calibration be ``hours`` older, its parallel volume have grown with the gain, and no saline run tell. Made anew."""
+    grown = AGED_GAIN * (1.0 - math.exp(-hours / AGEING_HOURS))
+    recipe = acquisition.recipe
+    bare = made(replace(recipe, runs=tuple(plan for plan in recipe.runs if plan.conditions.injection is None)))
+
+    def change(volume: Facts) -> None:
+        volume["at"] = (datetime.fromisoformat(volume["at"]) - timedelta(hours=hours)).isoformat()
+
+    broken = with_facts(scaled(bare, VOLUME, 1.0 + grown), volume_facts(change))
+    return Injected(broken, (Expected("calibration-age"), Expected("parallel-volume-age")))
+
+
 def saline_disagrees(acquisition: Acquisition, ml: float) -> Injected:
     """Let the saline runs have been recorded with ``ml`` more parallel volume than is declared; the other runs are as declared."""
     for run in saline_runs(acquisition):
@@ -154,14 +167,14 @@ def reference_offset_wrong(acquisition: Acquisition, ml: float) -> Injected:
 
 
 def resistivity_wrong(acquisition: Acquisition, excess: float) -> Injected:
-    """Send conductances, and declare a resistivity of the blood ``excess`` (a fraction) too high."""
+    """Send conductances, and declare a resistivity of the blood ``excess`` (a fraction) too high: a factor and a shift in one."""
     broken = as_conductance(acquisition)
 
     def change(manifest: Facts) -> None:
         sensor = manifest["sensors"]["volume"]
         sensor["blood_resistivity_ohm_cm"] = round(sensor["blood_resistivity_ohm_cm"] * (1.0 + excess), 2)
 
-    return Injected(with_facts(broken, change), (Expected("reference-stroke-volume"),))
+    return Injected(with_facts(broken, change), (Expected("reference-stroke-volume"), Expected("reference-volumes")))
 
 
 def saline_runs(acquisition: Acquisition) -> list[str]:

@@ -33,6 +33,9 @@ name = "visit-1"
 required_runs = ["steady", "preload-reduction"]
 required_stages = ["baseline"]
 
+[limits.pressure-points]
+fail_below = 2
+
 [[stages]]
 name = "baseline"
 reference = true

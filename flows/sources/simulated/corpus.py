@@ -38,6 +38,9 @@ SALINE = Conditions(duration_s=12.0, rr_spread=0.004, injection=Injection(onset_
 CLOSED_EVERY = 3
 """Every third heart is one of `CLOSED_HEARTS`, so that no fault is tried on one kind of circulation alone."""
 
+AORTA_EVERY = 2
+"""Every second left heart has a second sensor in the aorta: many studies have none."""
+
 FIRST_DAY = datetime(2026, 2, 2, 9, 0, tzinfo=UTC)
 
 
@@ -105,6 +108,7 @@ def clean_recipe(
         seed=100 * seed,
         raw_volume=True,
         points_mmhg=(0, 25, 50, 100),
+        with_aorta=subject.chamber == "LV" and seed % AORTA_EVERY == 0,
     )
 
 

@@ -52,7 +52,9 @@ def _copied(
     spliced: dict[str, FloatArray] = {}
     for name in columns or tuple(name for name in own if name != TIME):
         taken = other[name][:count]
-        spliced[name] = np.concatenate([taken + noise[name] * rng.standard_normal(count) if noisy else taken, own[name][count:]])
+        spliced[name] = np.concatenate(
+            [taken + noise.get(name, catheter.pressure_noise_mmhg) * rng.standard_normal(count) if noisy else taken, own[name][count:]]
+        )
     broken = with_columns(acquisition, target, spliced)
     truths = acquisition.truth
     beats = _joined(truths[source].beats, truths[target].beats, count / acquisition.recipe.rate_hz)
@@ -97,6 +99,13 @@ def replicate_differs(acquisition: Acquisition, excess: float) -> Injected:
     stronger = replace(recipe.heart, ees_mmhg_per_ml=recipe.heart.ees_mmhg_per_ml * (1.0 + excess))
     runs = tuple(replace(plan, heart=stronger) if plan.run == last else plan for plan in recipe.runs)
     return Injected(made(replace(recipe, runs=runs)), (Expected("replicates-agree"),))
+
+
+def replicate_shifted(acquisition: Acquisition, ml: float) -> Injected:
+    """Let the volume read ``ml`` (raw) too much in the last occlusion: the catheter moved, and its V0 with it."""
+    last = _ramps(acquisition)[-1]
+    moved = with_columns(acquisition, last, {VOLUME: acquisition.columns[last][VOLUME] + ml})
+    return Injected(moved, (Expected("replicate-intercepts-agree"), Expected("runs-agree-volume")))
 
 
 def _ramps(acquisition: Acquisition) -> list[str]:

@@ -5,6 +5,7 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 from flows.sources.simulated import (
+    absence_faults,
     beat_faults,
     calibration_faults,
     faults,
@@ -62,6 +63,7 @@ SHARES = (0.0, 0.2, 0.4, 0.6, 0.8, 1.0)
 MMHG = (0.0, 0.5, 2.0, 5.0, 10.0, 20.0)
 ML = (0.0, 1.0, 4.0, 10.0, 20.0, 40.0)
 EXCESS = (0.0, 0.03, 0.08, 0.15, 0.3, 0.6)
+ALPHAS = (1.0, 0.9, 0.8, 0.7, 0.6, 0.5)
 FACTOR = (1.0, 1.01, 1.04, 1.1, 1.3, 2.0)
 
 ACQUISITION_LADDERS = (
@@ -78,6 +80,10 @@ ACQUISITION_LADDERS = (
     Ladder("alpha-vc-sign-wrong", calibration_faults.alpha_vc_sign_wrong, "1", SHARES),
     Ladder("resistivity-wrong", calibration_faults.resistivity_wrong, "1", EXCESS),
     Ladder("calibration-stale", calibration_faults.calibration_stale, "h", (0.0, 1.0, 4.0, 12.0, 36.0, 96.0)),
+    Ladder("calibration-stale-no-saline", calibration_faults.calibration_stale_without_saline, "h", (0.0, 1.0, 4.0, 12.0, 36.0, 96.0)),
+    Ladder("alpha-missing", faults.alpha_missing, "1", ALPHAS),
+    Ladder("alpha-vc-missing", faults.alpha_vc_missing, "1", ALPHAS),
+    Ladder("fluid-filled", faults.fluid_filled, "Hz", (100.0, 60.0, 40.0, 20.0, 15.0, 10.0)),
     Ladder("saline-disagrees", calibration_faults.saline_disagrees, "mL", ML),
     Ladder("reference-gain-wrong", calibration_faults.reference_gain_wrong, "1", EXCESS),
     Ladder("reference-offset-wrong", calibration_faults.reference_offset_wrong, "mL", ML),
@@ -85,8 +91,10 @@ ACQUISITION_LADDERS = (
     Ladder("run-copied-with-new-noise", identity_faults.run_copied_with_new_noise, "1", SHARES),
     Ladder("run-copied-with-new-ecg", identity_faults.run_copied_with_new_ecg, "1", SHARES),
     Ladder("subject-swapped", identity_faults.subject_swapped, "1", SHARES),
+    Ladder("ramps-missing", absence_faults.ramps_missing, "1", SHARES),
     Ladder("rest-as-ramp", identity_faults.rest_as_ramp, "1", SHARES),
     Ladder("replicate-differs", identity_faults.replicate_differs, "1", EXCESS),
+    Ladder("replicate-shifted", identity_faults.replicate_shifted, "mL", ML),
 )
 """Faults of a whole acquisition, six severities each, the first harmless."""
 
@@ -94,12 +102,16 @@ RUN_LADDERS = (
     Ladder("pressure-sent-in-kpa", run_faults.pressure_sent_in_kpa, "1", SHARES),
     Ladder("pressure-sent-in-cmh2o", run_faults.pressure_sent_in_cmh2o, "1", SHARES),
     Ladder("volume-sent-in-litres", run_faults.volume_sent_in_litres, "1", SHARES),
+    Ladder("volume-calibrated-twice", run_faults.volume_calibrated_twice, "1", SHARES),
     Ladder("channels-swapped", run_faults.channels_swapped, "1", SHARES),
     Ladder("pressure-inverted", run_faults.pressure_inverted, "1", SHARES),
     Ladder("volume-inverted", run_faults.volume_inverted, "1", SHARES),
     Ladder("rate-misdeclared", faults.rate_misdeclared, "1", FACTOR),
     Ladder("clock-misdeclared", faults.clock_misdeclared, "1", FACTOR),
     Ladder("clock-stretched", run_faults.clock_stretched, "1", FACTOR),
+    Ladder("stamps-stretched", run_faults.stamps_stretched, "1", FACTOR),
+    Ladder("time-backwards", signal_faults.time_backwards, "s", (0.0, 0.02, 0.1, 0.5, 2.0, 8.0)),
+    Ladder("columns-misnamed", absence_faults.columns_misnamed, "1", SHARES),
     Ladder("end-misdeclared", signal_faults.end_misdeclared, "s", (0.0, 0.2, 1.0, 3.0, 8.0, 20.0)),
     Ladder("pressure-gone", run_faults.pressure_gone, "1", SHARES),
     Ladder("volume-gone", run_faults.volume_gone, "1", SHARES),

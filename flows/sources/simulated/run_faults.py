@@ -8,6 +8,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Callable, Iterable
+from dataclasses import replace
 
 import numpy as np
 
@@ -60,8 +61,19 @@ def pressure_sent_in_kpa(acquisition: Acquisition, share: float) -> Injected:
 
 
 def pressure_sent_in_cmh2o(acquisition: Acquisition, share: float) -> Injected:
-    """Write the pressure of a ``share`` of the runs in cmH2O, declared as mmHg."""
-    return in_some(acquisition, share, PRESSURE, lambda _, values: values * CMH2O_PER_MMHG, "pressure-units")
+    """Write the pressure of a ``share`` of the runs in cmH2O, declared as mmHg: runs disagree, and a second pressure does with it."""
+    broken = in_some(acquisition, share, PRESSURE, lambda _, values: values * CMH2O_PER_MMHG, "pressure-units")
+    in_aorta = tuple(replace(one, check="aortic-agreement") for one in broken.expected)
+    return replace(broken, expected=(*broken.expected, *in_aorta, Expected("runs-agree-pressure")))
+
+
+def volume_calibrated_twice(acquisition: Acquisition, share: float) -> Injected:
+    """Send the volume of a ``share`` of the runs in mL, declared raw: gain and parallel volume are taken out once more."""
+    catheter = acquisition.recipe.catheter
+    broken = changed(
+        acquisition, VOLUME, lambda _, raw: (raw - catheter.volume_shift_ml) / catheter.volume_gain, first_runs(acquisition, share)
+    )
+    return Injected(broken, (Expected("runs-agree-volume"), Expected("reference-stroke-volume"), Expected("reference-volumes")))
 
 
 def volume_sent_in_litres(acquisition: Acquisition, share: float) -> Injected:
@@ -97,8 +109,14 @@ def clock_stretched(acquisition: Acquisition, factor: float) -> Injected:
             run["sampling_rate_hz"] = run["sampling_rate_hz"] * factor
 
     runs = tuple(acquisition.columns)
-    expected = tuple(Expected(check, run) for run in runs for check in ("duration", "heart-rate-agreement"))
+    expected = tuple(Expected(check, run) for run in runs for check in ("duration", "heart-rate-agreement", "clock-agreement"))
     return Injected(with_facts(broken, change), expected)
+
+
+def stamps_stretched(acquisition: Acquisition, factor: float) -> Injected:
+    """Let the time stamps alone come from a clock that ran ``factor`` times too fast; the declared rate is right."""
+    broken = changed(acquisition, TIME, lambda _, values: values / factor, acquisition.columns)
+    return Injected(broken, tuple(Expected("sampling-rate", run) for run in heart_runs(acquisition)))
 
 
 def pressure_gone(acquisition: Acquisition, share: float) -> Injected:

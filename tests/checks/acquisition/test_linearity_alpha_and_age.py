@@ -98,7 +98,9 @@ def test_the_intercept_of_a_fitted_line_may_be_negative():
 @pytest.mark.parametrize(("hours", "verdict"), [(0.3, P), (4.0, P), (4.1, S), (12.0, S), (12.1, F), (-13.0, F), (None, N)])
 def test_a_calibration_of_another_session_spoils_gain_and_offset(hours, verdict):
     assert found("calibration-age", raw(age_hours=hours)).worst() is verdict
-    assert CHECKS["calibration-age"].spoils == VOLUME_GAIN | VOLUME_OFFSET
+    assert found("parallel-volume-age", raw(age_hours=hours)).worst() is verdict
+    assert CHECKS["calibration-age"].spoils == VOLUME_GAIN
+    assert CHECKS["parallel-volume-age"].spoils == VOLUME_OFFSET
 
 
 def test_the_age_of_what_no_run_uses_does_not_count():

@@ -9,8 +9,8 @@ from checks.subject import AcquisitionSubject, RunSubject
 from metrics.signals.facts import AcquisitionFacts
 from tests.checks.made_subjects import CHECKS, RAMP, REST, judged_run, simulated
 
-P, F, N = Verdict.PASS, Verdict.FAIL, Verdict.NOT_EVALUATED
-CHECK = CHECKS["replicates-agree"]
+P, S, F, N = Verdict.PASS, Verdict.SUSPECT, Verdict.FAIL, Verdict.NOT_EVALUATED
+CHECK, INTERCEPT = CHECKS["replicates-agree"], CHECKS["replicate-intercepts-agree"]
 
 
 def ramp(name, factor=1.0, conditions=RAMP, seed=0, **facts):
@@ -20,8 +20,8 @@ def ramp(name, factor=1.0, conditions=RAMP, seed=0, **facts):
     return RunSubject(replace(subject.facts, run=name, **facts), subject.recording, signals, subject.beats, subject.accepted)
 
 
-def verdict(*runs, spoiled=None):
-    return judge(CHECK, AcquisitionSubject(AcquisitionFacts(), runs, spoiled or {}), CHECK.limits).worst()
+def verdict(*runs, spoiled=None, check=CHECK):
+    return judge(check, AcquisitionSubject(AcquisitionFacts(), runs, spoiled or {}), check.limits).worst()
 
 
 def test_replicates_of_one_heart_agree_and_those_of_two_do_not():
@@ -29,7 +29,26 @@ def test_replicates_of_one_heart_agree_and_those_of_two_do_not():
     assert verdict(ramp("a"), ramp("b", 1.1, seed=1)) is P
     assert verdict(ramp("a"), ramp("b", 1.5, seed=1)) is F
     assert verdict(ramp("a"), ramp("b", seed=1), ramp("c", 1.5)) is F
-    assert CHECK.spoils == PRELOAD_SLOPES
+    assert CHECK.spoils == PRELOAD_SLOPES - {"V0"}
+
+
+def moved(name, ml):
+    """A judged occlusion with volumes ``ml`` larger."""
+    one = ramp(name)
+    signals = replace(one.signals, volume_ml=one.signals.volume_ml + ml)
+    beats = replace(one.beats, edv_ml=one.beats.edv_ml + ml, esv_ml=one.beats.esv_ml + ml)
+    return RunSubject(one.facts, one.recording, signals, beats, one.accepted)
+
+
+def test_a_stronger_heart_keeps_its_v0_and_a_catheter_that_moved_its_slope():
+    rest = judged_run(simulated(conditions=REST)).subject
+    assert verdict(ramp("a"), ramp("b", 1.5), rest, check=INTERCEPT) is P
+    assert [verdict(ramp("a"), moved("b", ml), rest, check=INTERCEPT) for ml in (0.0, 2.0, 9.0, 30.0, -30.0)] == [P, P, S, F, F]
+    assert verdict(ramp("a"), moved("b", 30.0)) is P
+    assert verdict(ramp("a"), moved("b", 30.0), check=INTERCEPT) is N
+    assert verdict(ramp("a"), moved("b", 30.0), rest, check=INTERCEPT, spoiled={"b": frozenset({"V0"})}) is N
+    assert "V0" in INTERCEPT.spoils
+    assert not {"Ees", "PRSW"} & INTERCEPT.spoils
 
 
 def test_other_stages_and_manoeuvres_are_no_replicates():
