@@ -10,6 +10,7 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from checks import ALL as CHECKS
+from flows.assess import rules_of
 from flows.catalogue import evidence_files, lookups, store
 from flows.catalogue.engine import reading, writing
 from flows.publish.copies import copies, with_copies_rejected, with_copy_told
@@ -18,6 +19,7 @@ from flows.publish.refusal import GateRefused
 from flows.publish.release import UNNAMED, publish, seal, staged, write_tables
 from flows.publish.tables import build, schemas
 from flows.publish.views import acquisition_views, material, night_view
+from flows.publish.visits import jumps, with_jumps_shown, with_jumps_told
 from flows.reports.pages import write_report
 
 if TYPE_CHECKING:
@@ -62,7 +64,9 @@ def publish_night(night: Night) -> NightResult:
         copied = copies(lookups.columns(session, night.basis, "channels"))
         outcomes = {str(row["key"]): row for row in lookups.outcomes(session, night.basis).values()}
     keys = dict(zip(columns["acquisitions"]["acquisition"], columns["acquisitions"]["key"], strict=True))
-    tables = build(with_copies_rejected(columns, copied))
+    columns = with_copies_rejected(columns, copied)
+    jumped = jumps(columns, rules_of(night.protocol))
+    tables = build(with_jumps_told(columns, jumped))
     found = answers(tables)
     problems = [answer.problem() for answer in found if not answer.kept]
     if problems:
@@ -70,7 +74,8 @@ def publish_night(night: Night) -> NightResult:
 
     def evidence(acquisition: str) -> Mapping[str, Any]:
         key = keys[acquisition]
-        return with_copy_told(evidence_files.load(night.store, key, str(outcomes[key]["evidence_sha256"])), copied.get(acquisition))
+        own = evidence_files.load(night.store, key, str(outcomes[key]["evidence_sha256"]))
+        return with_copy_told(with_jumps_shown(own, jumped.get(acquisition, [])), copied.get(acquisition))
 
     shown = material(tables, night.protocol, CHECKS, found, night.basis.software_version)
     with staged(night.store) as folder:

@@ -192,7 +192,7 @@ def clock_misdeclared(acquisition: Acquisition, factor: float) -> Injected:
             run["channels"].pop("time", None)
 
     runs = tuple(broken.columns)
-    expected = tuple(Expected(check, run) for run in runs for check in ("duration", "heart-rate-agreement"))
+    expected = tuple(Expected(check, run) for run in runs for check in ("duration", "heart-rate-agreement", "clock-agreement"))
     return Injected(with_facts(broken, change), expected)
 
 

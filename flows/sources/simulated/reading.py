@@ -70,7 +70,7 @@ def read_indices(acquisition: Acquisition, pressure_late_s: float = 0.0) -> Indi
     with np.errstate(all="ignore"):
         for stage, plans in _stages(acquisition).items():
             of_kind = {
-                kind: [_ReadRun(acquisition, plan.run, pressure_late_s) for plan in plans if _declared_kind(acquisition, plan) == kind]
+                kind: [_ReadRun(acquisition, plan.run, pressure_late_s) for plan in plans if _is_read_as(acquisition, plan, kind)]
                 for kind in ("steady", "preload-reduction")
             }
             lines = [run.end_systolic_line() for run in of_kind["preload-reduction"]]
@@ -108,6 +108,13 @@ def _stages(acquisition: Acquisition) -> dict[str, list[RunPlan]]:
 
 def _declared_kind(acquisition: Acquisition, plan: RunPlan) -> str:
     return next((str(run["kind"]) for run in acquisition.manifest["runs"] if run["run"] == plan.run), kind_of(plan.conditions))
+
+
+def _is_read_as(acquisition: Acquisition, plan: RunPlan, kind: str) -> bool:
+    """Return whether a run is declared of a kind and its pressure under a column that its file holds."""
+    declared = next((run for run in acquisition.manifest["runs"] if run["run"] == plan.run), None)
+    is_there = declared is None or declared["channels"]["pressure"]["column"] in acquisition.columns[plan.run]
+    return is_there and _declared_kind(acquisition, plan) == kind
 
 
 def _mean(values: list[float]) -> float:
