@@ -14,6 +14,7 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass
+from itertools import repeat
 
 import numpy as np
 
@@ -177,47 +178,55 @@ def _march(
     in_damping = 1.0 / (1.0 + in_gain * heart.filling_resistance)
     leak, charge = 1.0 / heart.peripheral_resistance, STEP_S / heart.compliance_ml_per_mmhg
     is_leaky = heart.inlet_leak > 0.0 or heart.outlet_leak > 0.0
+    is_closed = heart.veins is not None
     volume = v0 + math.log1p(heart.filling_pressure_mmhg / scale) / exponent
     downstream = heart.downstream_pressure_mmhg
     stored = downstream + 0.3 * ees * (volume - v0)
-    veins = heart.veins
     empty_atrium, empty_veins, stiffness, atrium, reservoir = _emptiness_and_start(heart, volume, stored)
     outflow = inflow = forward = 0.0
     exp = math.exp
-    rows, loop_rows = [], []
-    columns = (strength.tolist(), degree.tolist(), filler.tolist(), conductance.tolist(), chest.tolist())
-    for strong, active, given, open_veins, around in zip(*columns, strict=True):
+    rows: list[tuple[float, ...]] = []
+    note = rows.append
+    given = (one.tolist() if is_closed else repeat(0.0, filler.size) for one in (conductance, chest))
+    for strong, active, filling, open_veins, around in zip(strength.tolist(), degree.tolist(), filler.tolist(), *given, strict=True):
         stretch = volume - v0
         pressure = strong * (ees + bend * stretch) * stretch + (1.0 - active) * scale * (exp(exponent * stretch) - 1.0)
-        filling = given
-        if veins is not None:
+        if is_closed:
             pressure += around
-            filling = given * (atrium - empty_atrium) + around
+            filling = filling * (atrium - empty_atrium) + around  # noqa: PLW2901  (given is the atrium's elastance, not a pressure)
             downstream = (reservoir - empty_veins) * stiffness
-        outflow = (outflow + out_gain * (pressure - stored)) * out_damping
-        outflow = forward = max(outflow, 0.0)
-        inflow = (inflow + in_gain * (filling - pressure)) * in_damping
-        inflow = max(inflow, 0.0)
-        through_inlet = inflow
+        outflow = max((outflow + out_gain * (pressure - stored)) * out_damping, 0.0)
+        inflow = max((inflow + in_gain * (filling - pressure)) * in_damping, 0.0)
+        forward, through_inlet = outflow, inflow
         if is_leaky:
             if inflow == 0.0 and pressure > filling:
                 through_inlet -= heart.inlet_leak * math.sqrt(pressure - filling)
             if outflow == 0.0 and stored > pressure:
                 forward -= heart.outlet_leak * math.sqrt(stored - pressure)
-        rows.append((pressure, volume, stored + heart.characteristic_resistance * forward, forward, through_inlet, filling))
         runoff = (stored - downstream) * leak
-        if veins is not None:
+        if is_closed:
+            note((pressure, volume, stored, forward, through_inlet, atrium, reservoir))
             returning = (downstream - filling) * open_veins
-            loop_rows.append((atrium, reservoir, stored, returning))
             atrium += STEP_S * (returning - through_inlet)
             reservoir += STEP_S * (runoff - returning)
+        else:
+            note((pressure, volume, stored, forward, through_inlet))
         volume += STEP_S * (through_inlet - forward)
         stored += charge * (forward - runoff)
-    found = tuple(np.ascontiguousarray(column) for column in np.asarray(rows, dtype=np.float64).T)
-    if veins is None:
-        return found
-    atrial, venous, arterial, back = (np.ascontiguousarray(column) for column in np.asarray(loop_rows, dtype=np.float64).T)
-    return *found, atrial, venous, heart.compliance_ml_per_mmhg * arterial, back, chest
+    return _read_off(heart, np.ascontiguousarray(np.asarray(rows, dtype=np.float64).T), filler, conductance, chest)
+
+
+def _read_off(heart: Heart, solved: FloatArray, filler: FloatArray, conductance: FloatArray, chest: FloatArray) -> tuple[FloatArray, ...]:
+    """Return the columns of a solution, and of its loop where it is closed, from what the march noted, shape (5 or 7, steps)."""
+    pressure, volume, stored, forward, through_inlet, *others = solved
+    aortic = stored + heart.characteristic_resistance * forward
+    if heart.veins is None:
+        return pressure, volume, aortic, forward, through_inlet, filler
+    (atrium, reservoir), veins = others, heart.veins
+    filling = filler * (atrium - veins.atrial_unstressed_ml) + chest
+    returning = ((reservoir - veins.unstressed_ml) / veins.compliance_ml_per_mmhg - filling) * conductance
+    arterial = heart.compliance_ml_per_mmhg * stored
+    return pressure, volume, aortic, forward, through_inlet, filling, atrium, reservoir, arterial, returning, chest
 
 
 def _emptiness_and_start(heart: Heart, volume_ml: float, stored_mmhg: float) -> tuple[float, float, float, float, float]:
