@@ -73,7 +73,8 @@ def volume_calibrated_twice(acquisition: Acquisition, share: float) -> Injected:
     broken = changed(
         acquisition, VOLUME, lambda _, raw: (raw - catheter.volume_shift_ml) / catheter.volume_gain, first_runs(acquisition, share)
     )
-    return Injected(broken, (Expected("runs-agree-volume"), Expected("reference-stroke-volume"), Expected("reference-volumes")))
+    names = ("runs-agree-volume", "runs-agree-stroke-volume", "reference-stroke-volume", "reference-volumes")
+    return Injected(broken, tuple(Expected(name) for name in names))
 
 
 def volume_sent_in_litres(acquisition: Acquisition, share: float) -> Injected:

@@ -37,6 +37,7 @@ AT_EVERY_STEP = {
 """Faults that take the evidence away, and how gravely the check that misses it judges: at every step, since none tells its size."""
 
 CONTRADICTING = {("pressure-sent-in-cmh2o", "runs-agree-pressure"), ("volume-calibrated-twice", "runs-agree-volume")}
+CONTRADICTING |= {("volume-calibrated-twice", "runs-agree-stroke-volume")}
 """Faults of some runs, and the check by which these contradict the others: where all have the fault nothing does."""
 
 SUSPECTS_FROM = {("alpha-wrong", "alpha-plausible"): 0.6}
