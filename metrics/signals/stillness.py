@@ -16,6 +16,9 @@ JUMP_RATE_HZ = 250.0
 HELD_S = 0.100
 """Shorter pieces are plateaus of any converter; house default."""
 
+RAIL_TIMES = 3
+"""A channel that keeps coming back to its own extreme is clipped there, not held."""
+
 PAUSE_S = 1.5
 """Longer than any diastole but that of an asystole; house default."""
 
@@ -66,7 +69,7 @@ def is_broken_off(samples: FloatArray, first: IntArray, stop: IntArray, rate_hz:
 def standing(samples: FloatArray, rate_hz: float) -> tuple[IntArray, IntArray]:
     """Return (first, stop) of every stretch, half open, that stands still as no heart does.
 
-    It lasts 0.1 s or more and is broken off, or outlasts any diastole.
+    It lasts 0.1 s or more and is broken off elsewhere than at a rail, or outlasts any diastole.
 
     >>> wave = np.sin(np.arange(1000) / 8.0)
     >>> wave[400:500] = wave[400]
@@ -78,5 +81,16 @@ def standing(samples: FloatArray, rate_hz: float) -> tuple[IntArray, IntArray]:
     first, stop = first[long], stop[long]
     if first.size == 0:
         return first, stop
-    stands = is_broken_off(samples, first, stop, rate_hz) | (stop - first >= PAUSE_S * rate_hz)
+    cut_off = is_broken_off(samples, first, stop, rate_hz) & ~_is_at_rail(samples, first)
+    stands = cut_off | (stop - first >= PAUSE_S * rate_hz)
     return first[stands], stop[stands]
+
+
+def _is_at_rail(samples: FloatArray, first: IntArray) -> BoolArray:
+    """Return which stretches stand at a rail: at the channel's highest or lowest value, with two more of them; shape of ``first``."""
+    value, known = samples[first], samples[np.isfinite(samples)]
+    at_rail = np.zeros(first.shape, dtype=bool)
+    for extreme in (known.max(), known.min()):
+        there = value == extreme
+        at_rail |= there & (np.count_nonzero(there) >= RAIL_TIMES)
+    return at_rail

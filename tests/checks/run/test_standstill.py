@@ -83,6 +83,14 @@ def test_beats_that_hold_a_piece_go_and_the_others_stay(name):
     assert {worst(simulated(), "held-signal"), worst(simulated("right", RAMP, COARSE), "held-signal")} == {P}
 
 
+@pytest.mark.parametrize("name", NAMES)
+def test_a_channel_cut_off_at_a_rail_is_not_held(name):
+    samples = simulated().recording.channels[name].samples
+    cut = rerecorded(simulated(), **{name: np.minimum(samples, np.quantile(samples, 0.75))})
+    assert worst(cut, "held-signal") is P
+    assert worst(cut, f"{name}-dropout") is P
+
+
 def test_what_is_left_of_a_volume_that_fell_out_withholds_no_pressure():
     check = of(judged_run(stopped(simulated(), "volume", 0.9)), "volume-flat").check
     assert not check.spoils & {"EDP", "Pmax", "dPdt_max", "HR"}
