@@ -17,7 +17,7 @@ class VenousReturn:
 
     ``stressed_volume_ml`` is all blood beyond what the vessels, the atrium and the ventricle hold unstretched; it fills the loop and
     is conserved. Compliance in mL/mmHg, resistance in mmHg s/mL, atrial elastances in mmHg/mL. Values are house choices in the order
-    of what is known of the systemic veins: about 100 mL/mmHg and 2.5 L unstressed.
+    of what is known of the systemic veins: about 100 mL/mmHg and 2.5 L unstressed (from memory).
     """
 
     stressed_volume_ml: float
@@ -40,7 +40,7 @@ class Heart:
     at 1 mmHg, growing with the root of the gradient as through an orifice. ``conditions`` are what a site would declare.
 
     With ``veins`` the ventricle is part of a closed loop: then ``filling_pressure_mmhg`` is only where the atrium begins and by what
-    breath swings, and neither the kick nor the downstream pressure is used.
+    breath swings; the kick is not used, and the downstream pressure only to begin with.
     """
 
     name: str
