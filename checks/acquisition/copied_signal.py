@@ -148,8 +148,13 @@ def _compared_channels(run: RunSubject) -> dict[str, tuple[FloatArray, float]]:
     held = run.recording.channels
     segments = sorted(name for name in held if name.startswith("segment-"))
     names = [name for name in ("pressure", "volume") if name in held] + (segments[:1] if "volume" not in held else [])
-    kept = {name: (np.nan_to_num(held[name].samples), held[name].sampling_rate_hz) for name in names}
-    return {name: one for name, one in kept.items() if one[0].size and np.ptp(one[0]) > 0.0}
+    kept = {name: (_filled(held[name].samples), held[name].sampling_rate_hz) for name in names}
+    return {name: one for name, one in kept.items() if np.any(one[0] != one[0][:1])}
+
+
+def _filled(samples: FloatArray) -> FloatArray:
+    gaps = np.isnan(samples)
+    return np.where(gaps, 0.0, samples) if gaps.any() else samples
 
 
 CHECK = Check(
