@@ -91,6 +91,9 @@ SLOW_PRESSURE = frozenset(["dPdt_max", "dPdt_min", "tau", "Pinf", "dPdt_max_EDV"
 STEEPEST = SLOW_PRESSURE | frozenset({"PWRmax", "PWRmax_EDV2"})
 """What is read where pressure is steepest: moved by whatever is fast and not the heart's."""
 
+PEAK = frozenset({"Pmax", "PWRmax", "PWRmax_EDV2"})
+"""What is read where pressure is highest."""
+
 END_DIASTOLE = frozenset(["EDP", "EDPVR_beta", "EDPVR_stiffness", "V20", "V30"])
 """What is read from the pressure at end-diastole, a small pressure at an instant that dP/dt decides."""
 
@@ -119,11 +122,20 @@ PRELOAD_SLOPES = frozenset(
         "efficiency",
     ]
 )
-PRESSURE_MOVED = PRESSURE_OFFSET | frozenset({"Ees", "EDPVR_beta"})
-"""A pressure that jumps or drifts inside a run: also what is a slope of pressure against volume. The loops' areas, and PRSW with them,
-move by less than 2 % at 5 mmHg (computed on simulated hearts)."""
+WORK_SLOPES = frozenset({"PRSW", "Vw"})
+"""What is a slope of stroke work, which bends with load."""
 
-VOLUME_MOVED = VOLUME_OFFSET | frozenset(
+STROKE_WORK = frozenset({"SW", "PVA", "efficiency"})
+"""What stroke work goes into at rest."""
+
+PRESSURE_MOVED = (PRESSURE_OFFSET - END_DIASTOLE) | frozenset({"Ees"})
+"""A pressure that jumps or drifts inside a run: also what is a slope of pressure against volume, and not what is read at end-diastole,
+which less reaches. The loops' areas, and PRSW with them, move by less than 2 % at 5 mmHg (computed on simulated hearts)."""
+
+END_SYSTOLIC_VOLUME = frozenset(["ESV", "ESVI"])
+"""What a volume that jumps or drifts reaches before it reaches the larger end-diastolic volume."""
+
+VOLUME_MOVED = (VOLUME_OFFSET - END_SYSTOLIC_VOLUME) | frozenset(
     ["Ees", "Ees_Ea", "PRSW", "dPdt_max_EDV", "EDPVR_beta", "EDPVR_stiffness", "PVA", "PE", "efficiency"]
 )
 """A volume that jumps or drifts inside a run: also every slope against volume. Stroke volume and stroke work are differences within
@@ -132,14 +144,30 @@ beats and move by less than 2 % at 10 mL (computed on simulated hearts)."""
 DELAY = frozenset(["Ees", "Ees_Ea", "V100", "V120", "PVA", "PE", "efficiency"])
 """Volume and pressure a few hundredths of a second apart, either way: the slope of end-systolic points, and what is made of it."""
 
+WORK = frozenset(["SW", "PRSW", "Vw", "PVA", "efficiency"])
+"""What is summed around the loop, and what is made of it."""
+
 END_SYSTOLE = frozenset(["ESP", "Ea", "EaI", "Ees", "Ees_Ea", "V100", "V120", "PVA", "PE", "efficiency"])
 """What is read from pressure where the volume says that systole ends."""
 
-PRESSURE_LATE = STEEPEST | frozenset(["SW", "PRSW", "Vw", "PVA", "efficiency"])
+PRESSURE_LATE = STEEPEST | WORK
 """A pressure that is late or slow: what is steepest in it, and what is summed around the loop."""
 
 VOLUME_LATE = VOLUME_GAIN | VOLUME_OFFSET | frozenset(["Ees_Ea", "PRSW", "efficiency"])
 """A volume so late that it is another one at every landmark of pressure."""
+
+VOLUME_TOP = WORK | frozenset(["EDV", "EDVI", "SV", "SVI", "EF", "CO", "CI", "Ea", "EaI", "Ees_Ea", "PWRmax_EDV2", "dPdt_max_EDV"])
+VOLUME_TOP |= frozenset(["EDPVR_beta", "EDPVR_stiffness", "V20", "V30"])
+"""What is read from the largest volumes: not where systole ends, nor the line through those points."""
+
+VOLUME_BOTTOM = WORK | END_SYSTOLE - {"ESP"} | frozenset(["ESV", "ESVI", "SV", "SVI", "EF", "CO", "CI", "V0"])
+"""What is read from the smallest volumes: not end-diastole, nor the passive curve."""
+
+VOLUME_END_SYSTOLE = VOLUME_BOTTOM - WORK | frozenset(["PVA", "efficiency", "EDPVR_beta", "EDPVR_stiffness", "V20", "V30", "dPdt_max_EDV"])
+"""What is read from a volume at one instant which an extreme chooses, and lines against volume: noise chooses with it."""
+
+INTERCEPTS = frozenset(["V0", "V100", "V120", "Vw", "PRSW", "PE", "PVA", "efficiency", "V20", "V30"])
+"""What lines against a noisy volume say far from the points they go through."""
 
 STEADY_STATE = frozenset(
     ["EDV", "EDVI", "ESV", "ESVI", "SV", "SVI", "EF", "CO", "CI", "EDP", "ESP", "Pmax", "Ea", "EaI", "SW", "dPdt_max", "dPdt_min"]

@@ -8,7 +8,7 @@ from functools import cached_property
 
 import numpy as np
 
-from metrics.arrays import BoolArray, FloatArray, IntArray, running_median
+from metrics.arrays import BoolArray, FloatArray, IntArray
 from metrics.indices.end_systole import end_systole
 from metrics.signals.beats import Beats
 from metrics.signals.calibrate import Signals
@@ -60,15 +60,6 @@ class RunSubject:
         if self.window is not None:
             chosen = chosen & ((np.arange(len(beats)) <= self.window.last_at) | is_at_usual_rate(beats, self.window.onset_at, self.facts))
         return course(points.at(np.flatnonzero(chosen)), bent=self.facts.kind == "preload-reduction")
-
-    def volume_at_stake_ml(self) -> float:
-        """Return against what a shift of volume is held: the accepted beats' range of ESV in the window, or else their median EDV."""
-        beats = self.known_beats()
-        chosen = np.ones(len(beats), dtype=bool) if self.accepted is None else self.accepted
-        if self.window is not None:
-            esv_ml = running_median(beats.esv_ml[chosen & self.window.inside], 3)
-            return float(np.ptp(esv_ml)) if esv_ml.size > 1 else float("nan")
-        return float(np.nanmedian(beats.edv_ml[chosen])) if chosen.any() else float("nan")
 
     @property
     def in_window(self) -> BoolArray:

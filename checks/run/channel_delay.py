@@ -51,7 +51,7 @@ CHECK = Check(
     unit="ms",
     limits=Limits(suspect_above=10.0, fail_above=15.0, basis="20 ms move Ees by 5 % (computed); valves open within 10 ms (from memory)"),
     limits_rv=Limits(
-        suspect_above=20.0, fail_above=25.0, basis="the onset of ejection may stand 15 ms to either side in health; house default"
+        suspect_above=15.0, fail_above=20.0, basis="the onset of ejection may stand 15 ms to either side in health; house default"
     ),
     reason="volume and pressure are {value:.0f} ms apart beyond the declared delay (limit {limit:g} ms)",
     remedy=REMEDY,
@@ -65,7 +65,7 @@ GROSS = Check(
     measure=late_ms,
     unit="ms",
     limits=Limits(fail_above=32.0, basis="a volume read 30 ms late at a landmark of pressure moves stroke volume by 5 % (computed)"),
-    limits_rv=Limits(fail_above=25.0, basis="without an isovolumic plateau 25 ms move stroke volume by 5 % (computed)"),
+    limits_rv=Limits(fail_above=28.0, basis="without an isovolumic plateau 28 ms move stroke volume by 5 % (computed)"),
     reason="volume is {value:.0f} ms late, too far for any volume read at an instant that pressure tells (limit {limit:g} ms)",
     remedy=REMEDY,
     spoils=VOLUME_LATE,

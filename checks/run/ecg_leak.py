@@ -9,9 +9,12 @@ end-systolic points shows in the line's intercept first.
 
 from __future__ import annotations
 
+import math
+
 import numpy as np
 
 from checks.check import Check, Level, Limits, Measured, single
+from checks.run.noise import responses
 from checks.spoils import ECG_LEAK, VOLUME_SHAPE
 from checks.subject import RunSubject
 from metrics.arrays import FloatArray, IntArray
@@ -22,15 +25,23 @@ AROUND_R_S = 0.040
 SLOW_DEGREE = 2
 LEAST_BEATS = 5
 MOST_BEATS = 60
+OF_MEDIAN = 1.25
+"""The standard error of a median over that of a mean, of normal values (from memory)."""
+
 LEAST_LIKENESS = 0.8
 """Correlation of volume with the electrogram, the slow curve apart, below which there is no leak; house default."""
+
+MOST_BY_CHANCE = 5.0
+"""Of the slope's standard error: filtered noise keeps its neighbours, and the best of several lags is taken; house default."""
 
 LAGS_S = np.arange(-0.020, 0.021, 0.004)
 """A declared delay has moved the volume against the electrogram by now, and a conditioner has delays of its own."""
 
 
-def leak(volume_ml: FloatArray, lead_mv: FloatArray, half: int, lags: IntArray) -> float:
+def leak(volume_ml: FloatArray, lead_mv: FloatArray, half: int, lags: IntArray, noise_ml: float = 0.0) -> float:
     """Return how many mL of each mV leak from ``lead_mv`` into ``volume_ml``, 0 where they are not alike; R lies in the middle of both.
+
+    ``noise_ml`` is the SD of the noise in ``volume_ml``: a leak that it could well make by chance counts as none.
 
     >>> time_s = np.arange(-75, 76) / 250.0
     >>> lead = np.exp(-(time_s / 0.010) ** 2)
@@ -45,7 +56,8 @@ def leak(volume_ml: FloatArray, lead_mv: FloatArray, half: int, lags: IntArray) 
     sizes = np.linalg.norm(sharp_mv) * np.linalg.norm(sharp_ml, axis=0)
     likeness = np.abs(both) / np.where(sizes > 0.0, sizes, np.inf)
     best = int(np.argmax(likeness))
-    return float(both[best] / (sharp_mv @ sharp_mv)) if likeness[best] >= LEAST_LIKENESS else 0.0
+    found, by_chance = float(both[best] / (sharp_mv @ sharp_mv)), noise_ml / max(float(np.linalg.norm(sharp_mv)), 1e-12)
+    return found if likeness[best] >= LEAST_LIKENESS and abs(found) > MOST_BY_CHANCE * by_chance else 0.0
 
 
 def leak_share(subject: RunSubject) -> Measured:
@@ -62,7 +74,8 @@ def leak_share(subject: RunSubject) -> Measured:
     r_at = r_at[:: -(-r_at.size // MOST_BEATS)]
     places = r_at[:, None] + np.arange(-wide, wide + 1)
     volume_ml, lead_mv = np.median(signals.volume_ml[places], axis=0), zero_phase(np.median(ecg_mv[places], axis=0), rate_hz)
-    ml_per_mv = leak(volume_ml, lead_mv, half, np.unique(np.rint(LAGS_S * rate_hz)).astype(np.int64))
+    noise_ml = OF_MEDIAN * signals.volume_noise_ml * responses(rate_hz, subject.facts.chamber)[0] / math.sqrt(r_at.size)
+    ml_per_mv = leak(volume_ml, lead_mv, half, np.unique(np.rint(LAGS_S * rate_hz)).astype(np.int64), noise_ml)
     height_mv = float(np.max(np.abs(lead_mv - np.median(lead_mv))))
     stroke_ml = abs(float(np.nanmedian(beats.sv_ml))) if np.isfinite(beats.sv_ml).any() else float("nan")
     return single(abs(ml_per_mv) * height_mv / stroke_ml, float(r_at[0]) / rate_hz)

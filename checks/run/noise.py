@@ -13,12 +13,11 @@ import functools
 import numpy as np
 
 from checks.check import Check, Level, Limits, Measured, single
-from checks.run.hum import MAINS_HZ, line_amplitude, passed, shown_at_hz, stretches
-from checks.spoils import PRESSURE_EXTREMES, STEEPEST, VOLUME_SHAPE
+from checks.spoils import INTERCEPTS, PRESSURE_EXTREMES, STEEPEST, VOLUME_END_SYSTOLE
 from checks.subject import RunSubject
 from metrics.arrays import span
 from metrics.signals.filters import slope_per_s, steadied, zero_phase
-from metrics.signals.recording import Channel
+from metrics.signals.mains import Mains
 
 SINE = 1.1
 """The robust SD of a sine of amplitude 1 is 1.05 (computed), a little more with its third harmonic."""
@@ -44,16 +43,9 @@ def responses(sampling_rate_hz: float, chamber: str) -> tuple[float, float, floa
     return at_all, at_landmarks, in_slope
 
 
-def without_hum(taken_away: float, channel: Channel, reach: float) -> float:
+def without_hum(taken_away: float, found: Mains, reach: float) -> float:
     """Return the SD that the filter took away less what hum had of it, 0 where that is nearly all; ``reach`` is the calibrated span."""
-    scale, pieces = reach / span(channel.samples), stretches(channel.samples, channel.sampling_rate_hz)
-    square = taken_away**2
-    for mains_hz in MAINS_HZ:
-        hz = shown_at_hz(mains_hz, channel.sampling_rate_hz)
-        amplitude = line_amplitude(pieces, channel.sampling_rate_hz, hz) if np.isfinite(hz) and pieces.shape[0] else 0.0
-        if amplitude > 0.0:
-            lost = 1.0 - passed(hz, channel.sampling_rate_hz, "LV")[0]
-            square -= (SINE * scale * amplitude * lost) ** 2
+    square = taken_away**2 - sum((SINE * reach * share * (1.0 - through)) ** 2 for share, through in found.recorded)
     return float(np.sqrt(square)) if square > LEAST_LEFT * taken_away**2 else 0.0
 
 
@@ -61,7 +53,7 @@ def pressure_noise(subject: RunSubject) -> tuple[float, float]:
     """Return the SD of the noise in filtered pressure over what pressure moves by, and in dP/dt over its median maximum."""
     signals, beats = subject.known_signals(), subject.known_beats()
     reach_mmhg = span(signals.pressure_mmhg)
-    taken_mmhg = without_hum(signals.pressure_noise_mmhg, subject.channel("pressure"), reach_mmhg)
+    taken_mmhg = without_hum(signals.pressure_noise_mmhg, subject.mains("pressure"), reach_mmhg)
     left, _, steep = responses(signals.sampling_rate_hz, subject.facts.chamber)
     most = beats.dpdt_max_mmhg_per_s[np.isfinite(beats.dpdt_max_mmhg_per_s)]
     return taken_mmhg * left / reach_mmhg, taken_mmhg * steep / abs(float(np.median(most))) if most.size else float("nan")
@@ -81,7 +73,7 @@ def noise_of_volume(subject: RunSubject) -> Measured:
     """Return the SD of noise in a volume read at a landmark over what volume moves by, shape ()."""
     signals = subject.known_signals()
     reach_ml = span(signals.volume_ml)
-    taken_ml = without_hum(signals.volume_noise_ml, subject.channel("volume"), reach_ml)
+    taken_ml = without_hum(signals.volume_noise_ml, subject.mains("volume"), reach_ml)
     return single(taken_ml * responses(signals.sampling_rate_hz, subject.facts.chamber)[1] / reach_ml)
 
 
@@ -121,9 +113,26 @@ VOLUME = Check(
     measure=noise_of_volume,
     unit="1",
     limits=Limits(
-        suspect_above=0.03, fail_above=0.05, basis="an extreme of noisy values lies 1 to 2 SD out: more than 5 % of it; house default"
+        suspect_above=0.02,
+        fail_above=0.028,
+        basis="the smallest of noisy volumes lies 1.5 to 2 SD below: 5 % of the stroke; end-diastole is no extreme (computed)",
     ),
-    reason="noise has an SD of {value:.1%} of what volume moves by (limit {limit:.0%})",
+    reason="noise has an SD of {value:.1%} of what volume moves by (limit {limit:.1%})",
     remedy="look for a loose electrode contact or an excitation current set too low",
-    spoils=VOLUME_SHAPE,
+    spoils=VOLUME_END_SYSTOLE,
+)
+INTERCEPT = Check(
+    name="volume-noise-intercept",
+    title="Volume is quiet enough to extrapolate",
+    level=Level.RUN,
+    measure=noise_of_volume,
+    unit="1",
+    limits=Limits(
+        suspect_above=0.015,
+        fail_above=0.018,
+        basis="noise flattens lines through volumes: 1.8 % moves the intercept by 3 mL (computed)",
+    ),
+    reason="noise has an SD of {value:.1%} of what volume moves by, too much for a line's intercept (limit {limit:.1%})",
+    remedy="look for a loose electrode contact or an excitation current set too low",
+    spoils=INTERCEPTS,
 )

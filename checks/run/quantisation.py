@@ -12,7 +12,7 @@ import math
 import numpy as np
 
 from checks.check import Check, Level, Limits, Measured, single
-from checks.spoils import END_DIASTOLE, PRESSURE_EXTREMES, STEEPEST, VOLUME_SHAPE
+from checks.spoils import END_DIASTOLE, END_SYSTOLE, PEAK, STEEPEST, VOLUME_SHAPE
 from checks.subject import RunSubject
 from metrics.arrays import FloatArray, span
 
@@ -68,11 +68,24 @@ PRESSURE = Check(
     measure=rounding_of_pressure,
     unit="1",
     limits=Limits(
-        suspect_above=0.0075, fail_above=0.010, basis="1 % is a step of a 29th of the pulse, where dP/dt begins to move (computed)"
+        suspect_above=0.015, fail_above=0.025, basis="2.5 % is a step of 9 % of the pulse, so an error of up to 4 % of it; house default"
     ),
     reason="rounding to the converter's step has an SD of {value:.1%} of the pulse (limit {limit:.1%})",
     remedy="record pressure with a finer converter or a narrower range",
-    spoils=PRESSURE_EXTREMES | STEEPEST,
+    spoils=PEAK | END_SYSTOLE | {"V0"},
+)
+SLOPE = Check(
+    name="dpdt-quantisation",
+    title="Pressure steps are fine against its slope",
+    level=Level.RUN,
+    measure=rounding_of_pressure,
+    unit="1",
+    limits=Limits(
+        suspect_above=0.0075, fail_above=0.010, basis="1 % is a step of a 29th of the pulse, where dP/dt begins to move (computed)"
+    ),
+    reason="rounding to the converter's step has an SD of {value:.1%} of the pulse, too much for dP/dt (limit {limit:.1%})",
+    remedy="record pressure with a finer converter or a narrower range",
+    spoils=STEEPEST,
 )
 VOLUME = Check(
     name="volume-quantisation",

@@ -15,6 +15,7 @@ import numpy as np
 from metrics.arrays import BoolArray, FloatArray
 from metrics.signals.beats import Beats
 from metrics.signals.calibrate import Signals
+from metrics.signals.filters import steadied
 
 BEFORE, AFTER = 0.35, 0.65
 """Of a beat's length, around dP/dt maximum: where the steepest fall of volume is looked for."""
@@ -51,7 +52,8 @@ def volume_delay_s(signals: Signals, beats: Beats, chosen: BoolArray) -> float:
     Positive where volume is late.
     """
     volume_ml, middle = mean_beat(signals.volume_ml, signals, beats, chosen)
-    return onset_of_fall_s(volume_ml, middle, signals.sampling_rate_hz) if volume_ml.size else float("nan")
+    rate_hz = signals.sampling_rate_hz
+    return onset_of_fall_s(steadied(volume_ml, rate_hz), middle, rate_hz) if volume_ml.size else float("nan")
 
 
 def pressure_when_filling(signals: Signals, beats: Beats, chosen: BoolArray) -> float:
@@ -60,6 +62,7 @@ def pressure_when_filling(signals: Signals, beats: Beats, chosen: BoolArray) -> 
     A share of what pressure moves by in the mean beat.
     """
     volume_ml, middle = mean_beat(signals.volume_ml, signals, beats, chosen)
+    volume_ml = steadied(volume_ml, signals.sampling_rate_hz)
     pressure_mmhg, _ = mean_beat(signals.pressure_mmhg, signals, beats, chosen)
     if volume_ml.size == 0 or np.ptp(pressure_mmhg) == 0.0:
         return float("nan")

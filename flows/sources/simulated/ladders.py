@@ -124,7 +124,7 @@ RUN_LADDERS = (
     Ladder("volume-coarse", run_faults.volume_coarse, "mL", (0.0, 0.1, 0.5, 2.0, 5.0, 12.0)),
     Ladder("pressure-hum-50", noise_faults.pressure_hum_50, "mm[Hg]", MMHG),
     Ladder("pressure-hum-60", noise_faults.pressure_hum_60, "mm[Hg]", MMHG),
-    Ladder("volume-hum-50", noise_faults.volume_hum_50, "mL", (0.0, 0.5, 2.0, 5.0, 10.0, 20.0)),
+    Ladder("volume-hum-50", noise_faults.volume_hum_50, "mL", (0.0, 2.0, 8.0, 25.0, 60.0, 150.0)),
     Ladder("ecg-hum-60", noise_faults.ecg_hum_60, "mV", (0.0, 0.02, 0.1, 0.3, 1.0, 3.0)),
     Ladder("pressure-noisy", noise_faults.pressure_noisy, "mm[Hg]", MMHG),
     Ladder("volume-noisy", noise_faults.volume_noisy, "mL", (0.0, 0.5, 2.0, 5.0, 10.0, 20.0)),

@@ -6,7 +6,6 @@ import pytest
 from checks.check import Verdict
 from checks.run.beats_accepted import accepted_share
 from checks.run.ecg_leak import leak
-from checks.run.hum import line_amplitude, shown_at_hz, stretches
 from checks.run.noise import responses
 from checks.run.quantisation import converter_step, step_share
 from checks.run.ringing import common_swing
@@ -14,6 +13,7 @@ from checks.subject import RunSubject
 from flows.sources.simulated.corpus import clean_acquisition
 from flows.sources.simulated.heart import HEARTS
 from flows.sources.simulated.ladders import RUN_LADDERS
+from metrics.signals.mains import line_amplitude, shown_at_hz, stretches
 from metrics.signals.recording import Recording
 from tests.checks.made_acquisitions import judged
 from tests.checks.made_subjects import (
@@ -35,9 +35,9 @@ from tests.checks.made_subjects import (
 )
 
 P, S, F, N = Verdict.PASS, Verdict.SUSPECT, Verdict.FAIL, Verdict.NOT_EVALUATED
-HUM = ("edp-hum", "pressure-hum", "dpdt-hum", "volume-hum")
-NOISE = ("pressure-noise", "dpdt-noise", "volume-noise")
-STEPS = ("edp-quantisation", "pressure-quantisation", "volume-quantisation")
+HUM = ("edp-hum", "pressure-hum", "dpdt-hum", "end-systole-hum", "volume-hum")
+NOISE = ("pressure-noise", "dpdt-noise", "volume-noise", "volume-noise-intercept")
+STEPS = ("edp-quantisation", "dpdt-quantisation", "pressure-quantisation", "volume-quantisation")
 LEAK = ("ecg-leak", "ecg-leak-large")
 ALL = (*HUM, *NOISE, *STEPS, *LEAK, "ringing", "beats-accepted")
 LADDERS = {ladder.name: ladder for ladder in RUN_LADDERS}
@@ -46,8 +46,8 @@ CLIMBS = {
     "pressure-hum-60": ("edp-hum", "dpdt-hum"),
     "volume-hum-50": ("volume-hum",),
     "pressure-noisy": ("pressure-noise", "dpdt-noise"),
-    "volume-noisy": ("volume-noise",),
-    "pressure-coarse": ("edp-quantisation", "pressure-quantisation"),
+    "volume-noisy": ("volume-noise", "volume-noise-intercept"),
+    "pressure-coarse": ("edp-quantisation", "dpdt-quantisation", "pressure-quantisation"),
     "volume-coarse": ("volume-quantisation",),
     "ecg-leaking": LEAK,
 }
@@ -120,11 +120,12 @@ def test_hum_needs_a_stretch_without_a_gap():
 @pytest.mark.parametrize(
     ("name", "sd", "expected"),
     [
-        ("pressure", 0.5, (P, P, P)),
-        ("pressure", 2.0, (P, F, P)),
-        ("pressure", 10.0, (F, F, P)),
-        ("volume", 6.5, (P, P, S)),
-        ("volume", 12.0, (P, P, F)),
+        ("pressure", 0.5, (P, P, P, P)),
+        ("pressure", 2.0, (P, F, P, P)),
+        ("pressure", 10.0, (F, F, P, P)),
+        ("volume", 2.5, (P, P, P, S)),
+        ("volume", 3.5, (P, P, S, F)),
+        ("volume", 6.5, (P, P, F, F)),
     ],
 )
 def test_noise_first_reaches_the_slope_then_what_is_read_at_extremes(name, sd, expected):
@@ -141,11 +142,13 @@ def test_a_channel_too_slow_for_the_filter_shows_no_noise():
     assert all(one > 0.0 for one in responses(250.0, "RV"))
 
 
-@pytest.mark.parametrize(("step", "expected"), [(0.5, (P, P)), (1.2, (S, P)), (2.0, (F, P)), (4.0, (F, S)), (6.0, (F, F))])
+@pytest.mark.parametrize(
+    ("step", "expected"), [(0.5, (P, P, P)), (1.2, (S, P, P)), (2.0, (F, P, P)), (4.0, (F, S, P)), (7.0, (F, F, S)), (12.0, (F, F, F))]
+)
 def test_pressure_on_ever_coarser_steps(step, expected):
     subject = simulated()
     coarse = np.round(subject.recording.channels["pressure"].samples / step) * step
-    assert tuple(verdicts(rerecorded(subject, pressure=coarse), STEPS[:2]).values()) == expected
+    assert tuple(verdicts(rerecorded(subject, pressure=coarse), STEPS[:3]).values()) == expected
 
 
 @pytest.mark.parametrize(("step", "expected"), [(1.0, P), (5.0, S), (12.0, F)])
@@ -185,6 +188,13 @@ def test_a_leak_is_found_whatever_the_delay_and_the_slow_curve(late):
     assert leak(120.0 - 40.0 * time_s + 90.0 * time_s**2, lead, 10, lags) == 0.0
 
 
+def test_noise_that_looks_like_the_electrogram_by_chance_is_no_leak():
+    lead = np.exp(-((np.arange(-75, 76) / 250.0 / 0.012) ** 2))
+    volume = 120.0 + 0.5 * lead
+    assert leak(volume, lead, 10, np.array([0])) == pytest.approx(0.5, rel=0.05)
+    assert leak(volume, lead, 10, np.array([0]), 0.5) == 0.0
+
+
 def test_without_an_electrogram_no_leak_is_looked_for():
     subject = simulated()
     channels = {name: channel for name, channel in subject.recording.channels.items() if name != "ecg"}
@@ -213,7 +223,8 @@ def test_beats_that_were_lost_with_their_samples_say_nothing_against_the_others(
 def test_hum_and_noise_are_not_taken_for_ringing(heart):
     for sd in (2.0, 5.0, 10.0):
         assert worst(noise(simulated(heart), "pressure", sd), "ringing") in {P, N}
-        assert worst(mains(simulated(heart), "pressure", sd), "ringing") in {P, N}
+        for hz in (50.0, 60.0):
+            assert worst(mains(simulated(heart), "pressure", sd, hz), "ringing") in {P, N}
 
 
 def test_a_coarse_converter_does_not_ring():
