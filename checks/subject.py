@@ -9,6 +9,7 @@ from functools import cached_property
 import numpy as np
 
 from metrics.arrays import BoolArray, FloatArray, IntArray
+from metrics.indices.card import RunBeats
 from metrics.indices.end_systole import end_systole
 from metrics.signals.beats import Beats
 from metrics.signals.calibrate import Signals
@@ -19,6 +20,10 @@ from metrics.signals.recording import Channel, Recording
 from metrics.signals.saline import SalineIntercept, saline_intercept_of
 from metrics.signals.shifts import Course, LoadPoints, course
 from metrics.signals.stillness import standing
+from metrics.stats.lines import Line
+
+FEWEST_POINTS = 5
+"""Beats that a line of end-systolic points takes at least; customary (from memory)."""
 
 REGURGITATION = frozenset({"mitral-regurgitation", "tricuspid-regurgitation", "aortic-regurgitation", "shunt"})
 """Conditions under which forward stroke volume differs from the ventricle's own."""
@@ -108,6 +113,19 @@ class RunSubject:
             onset_at = 0 if self.window is None else self.window.onset_at
             return accepted & (np.arange(accepted.size) < onset_at)
         return accepted
+
+    @cached_property
+    def end_systolic_line(self) -> Line | None:
+        """Return the end-systolic line of a preload-reduction run, None where its beats carry none."""
+        if self.facts.kind != "preload-reduction" or self.beats is None or self.signals is None or self.accepted is None:
+            return None
+        chosen = self.accepted & self.in_window
+        if int(chosen.sum()) < FEWEST_POINTS:
+            return None
+        try:
+            return RunBeats(self.facts.run, self.signals, self.beats, chosen, self.facts.manoeuvre).end_systolic_line.line
+        except ValueError:
+            return None
 
     @cached_property
     def saline_intercept(self) -> SalineIntercept | None:

@@ -15,12 +15,10 @@ from scipy import stats
 
 from checks.check import Check, Level, Limits, Measured, single
 from checks.spoils import PRELOAD_SLOPES
-from checks.subject import AcquisitionSubject, RunSubject
-from metrics.indices.card import RunBeats
+from checks.subject import AcquisitionSubject
 from metrics.stats.lines import Line
 
 APART = 2.6
-FEWEST_BEATS = 5
 
 
 def pair_variation(first: tuple[float, float], second: tuple[float, float]) -> float:
@@ -68,23 +66,10 @@ def _pairs(subject: AcquisitionSubject, index: str) -> list[tuple[Line, Line]]:
     """Return the lines of each pair of replicates that no check of its own run spoils for an index."""
     lines: dict[tuple[str | None, str | None], list[Line]] = {}
     for run in subject.runs:
-        line = None if index in subject.spoiled.get(run.facts.run, frozenset()) else _line(run)
+        line = None if index in subject.spoiled.get(run.facts.run, frozenset()) else run.end_systolic_line
         if line is not None and line.slope > 0.0 and line.fieller_g < 1.0:
             lines.setdefault((run.facts.stage, run.facts.manoeuvre), []).append(line)
     return [pair for group in lines.values() for pair in combinations(group, 2)]
-
-
-def _line(run: RunSubject) -> Line | None:
-    """Return the end-systolic line of a preload-reduction run, None where its beats carry none."""
-    if run.facts.kind != "preload-reduction" or run.beats is None or run.signals is None or run.accepted is None:
-        return None
-    chosen = run.accepted & run.in_window
-    if int(chosen.sum()) < FEWEST_BEATS:
-        return None
-    try:
-        return RunBeats(run.facts.run, run.signals, run.beats, chosen, run.facts.manoeuvre).end_systolic_line.line
-    except ValueError:
-        return None
 
 
 CHECK = Check(
