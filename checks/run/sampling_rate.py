@@ -26,7 +26,8 @@ def rate_error(subject: RunSubject) -> Measured:
     channel = subject.channel("pressure")
     if channel.time_s is None:
         return single(np.nan)
-    ratio = channel.sampling_rate_hz / observed_rate_hz(channel)
+    shown_hz = observed_rate_hz(channel) if subject.signals is None else subject.signals.sampling_rate_hz
+    ratio = channel.sampling_rate_hz / shown_hz
     return Measured(np.array(abs(ratio - 1.0)), corroborated=np.array(not are_stamps_right(subject, float(ratio))))
 
 
