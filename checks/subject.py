@@ -13,6 +13,7 @@ from metrics.indices.card import RunBeats
 from metrics.indices.end_systole import end_systole
 from metrics.signals.beats import Beats
 from metrics.signals.calibrate import Signals
+from metrics.signals.delay import pressure_when_filling, volume_delay_s
 from metrics.signals.facts import AcquisitionFacts, PressureCalibration, RunFacts
 from metrics.signals.mains import Mains, mains
 from metrics.signals.preload import PreloadWindow, is_at_usual_rate, preload_window
@@ -93,6 +94,20 @@ class RunSubject:
             message = f"the run has no {name} channel"
             raise ValueError(message)
         return self.recording.channels[name]
+
+    @cached_property
+    def volume_delay_s(self) -> float:
+        """Return how long after dP/dt maximum the accepted beats begin to eject, seconds; NaN where it cannot be told."""
+        return volume_delay_s(self.known_signals(), self.known_beats(), self._counting)
+
+    @cached_property
+    def pressure_when_filling(self) -> float:
+        """Return how much of its range pressure still has to fall when the accepted beats fill; NaN where it cannot be told."""
+        return pressure_when_filling(self.known_signals(), self.known_beats(), self._counting)
+
+    @property
+    def _counting(self) -> BoolArray:
+        return np.ones(len(self.known_beats()), dtype=bool) if self.accepted is None else self.accepted
 
     def mains(self, name: str) -> Mains:
         """Return how much of the mains a channel holds; raises ValueError when the run does not hold the channel."""

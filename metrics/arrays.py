@@ -10,7 +10,7 @@ IntArray = NDArray[np.int64]
 BoolArray = NDArray[np.bool_]
 
 EDGES_PERCENT = (2.0, 98.0)
-MOST_SAMPLES = 60_000
+MOST_SAMPLES = 15_000
 """Percentiles of so many samples, evenly spread, are as good as those of all."""
 
 

@@ -10,12 +10,9 @@ before its valve opens, only of a gross delay.
 
 from __future__ import annotations
 
-import numpy as np
-
 from checks.check import Check, Level, Limits, Measured, single
 from checks.spoils import DELAY, VOLUME_LATE
 from checks.subject import REGURGITATION, RunSubject
-from metrics.signals.delay import volume_delay_s
 
 USUAL_S = {"LV": 0.003, "RV": -0.012}
 """How long after dP/dt maximum ejection begins: in a sound left ventricle 0-10 ms (from memory; -4 to 7 ms on simulated hearts with
@@ -28,9 +25,7 @@ def volume_late_ms(subject: RunSubject) -> float:
     """Return by how much volume comes later than usual after pressure, ms, below 0 where pressure is late; NaN with regurgitation."""
     if subject.facts.conditions & REGURGITATION:
         return float("nan")
-    beats = subject.known_beats()
-    chosen = np.ones(len(beats), dtype=bool) if subject.accepted is None else subject.accepted
-    return 1000.0 * (volume_delay_s(subject.known_signals(), beats, chosen) - USUAL_S[subject.facts.chamber])
+    return 1000.0 * (subject.volume_delay_s - USUAL_S[subject.facts.chamber])
 
 
 def apart_ms(subject: RunSubject) -> Measured:

@@ -18,7 +18,6 @@ from checks.check import Check, Level, Limits, Measured, single
 from checks.run.channel_delay import volume_late_ms
 from checks.spoils import END_SYSTOLE, PRESSURE_EXTREMES, PRESSURE_LATE
 from checks.subject import RunSubject
-from metrics.signals.delay import pressure_when_filling
 
 LATE_MS = {"LV": 13.0, "RV": 15.0}
 """What bears out that pressure has not followed, where it is high when filling begins."""
@@ -33,11 +32,8 @@ def pressure_late_ms(subject: RunSubject) -> Measured:
 
 def pressure_left(subject: RunSubject) -> Measured:
     """Return how much of its range pressure still has to fall once the ventricle fills, shape (); borne out where pressure is late too."""
-    beats = subject.known_beats()
-    chosen = np.ones(len(beats), dtype=bool) if subject.accepted is None else subject.accepted
-    left = pressure_when_filling(subject.known_signals(), beats, chosen)
     late = np.array(-volume_late_ms(subject) > LATE_MS[subject.facts.chamber])
-    return Measured(np.array(left), None, late)
+    return Measured(np.array(subject.pressure_when_filling), None, late)
 
 
 CHECK = Check(

@@ -24,7 +24,7 @@ AVERAGED_S = 0.300
 AROUND_R_S = 0.040
 SLOW_DEGREE = 2
 LEAST_BEATS = 5
-MOST_BEATS = 60
+MOST_BEATS = 30
 OF_MEDIAN = 1.25
 """The standard error of a median over that of a mean, of normal values (from memory)."""
 
