@@ -90,7 +90,7 @@ INTERCEPT = Check(
     measure=intercept_gap,
     unit="1",
     limits=Limits(suspect_above=0.05, fail_above=0.08, basis="house default beyond 2.6 standard errors: half of it moves their mean"),
-    reason="V0 of two occlusions of one stage differs by {value:.0%} of end-diastolic volume, beyond its uncertainty (limit {limit:.0%})",
+    reason="two occlusions of one stage show a V0 that differs by {value:.0%} of end-diastolic volume, beyond chance (limit {limit:.0%})",
     remedy="look at both occlusions; say which one is sound, or whether the catheter moved between them",
     spoils=frozenset({"V0", "V100", "V120", "PE", "PVA", "efficiency"}),
 )
