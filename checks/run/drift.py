@@ -5,6 +5,9 @@ end-systolic and end-diastolic relations, a channel that drifts carries the beat
 drift and load both go one way; what tells them apart are the beats before the onset and those after the deflation, so a run without
 them has a wide error and is rarely told. Contractility that changes, or what presses on the heart from outside, moves one of the two
 relations and may look like a drift: then too the relation read from this run is not the heart's.
+
+A median over a run at rest is off by half of what drifted; a slope bends by what drifts within its window. Each is held against what is
+read, as for a step.
 """
 
 from __future__ import annotations
@@ -12,25 +15,47 @@ from __future__ import annotations
 import numpy as np
 
 from checks.check import Check, Level, Limits, Measured, single
-from checks.spoils import PRESSURE_MOVED, VOLUME_MOVED
+from checks.spoils import END_DIASTOLE, END_SYSTOLIC_VOLUME, PRESSURE_MOVED, VOLUME_MOVED
+from checks.stakes import RESOLVED_MMHG, edp_at_stake_mmhg, esv_at_stake_ml, pressure_at_stake_mmhg, volume_at_stake_ml
 from checks.subject import RunSubject
+
+OF_A_MEDIAN = 0.5
+LIMITS = Limits(
+    suspect_above=0.02, fail_above=0.035, basis="house default: of two such errors in one ratio, 5 % remain (root of the sum of squares)"
+)
 
 
 def pressure_drift(subject: RunSubject) -> Measured:
-    """Return by how much pressure drifts over the run, mmHg, in the window of a preload-reduction run; 0 where it cannot be told."""
-    return single(abs(subject.course.pressure_drift_mmhg) * _share_in_use(subject))
+    """Return how far drift puts pressures off, over peak pressure or its range in the window; 0 where it cannot be told, shape ()."""
+    return _over(subject, subject.course.pressure_drift_mmhg, pressure_at_stake_mmhg(subject))
+
+
+def edp_drift(subject: RunSubject) -> Measured:
+    """Return how far drift puts end-diastolic pressure off, over that at rest; 0 where it is too small to be told, shape ()."""
+    if abs(subject.course.pressure_drift_mmhg) < RESOLVED_MMHG:
+        return single(0.0)
+    return _over(subject, subject.course.pressure_drift_mmhg, edp_at_stake_mmhg(subject))
 
 
 def volume_drift(subject: RunSubject) -> Measured:
-    """Return by how much volume drifts, over end-diastolic volume or the window's range of end-systolic volume; shape ()."""
-    return single(abs(subject.course.volume_drift_ml) * _share_in_use(subject) / subject.volume_at_stake_ml())
+    """Return how far drift puts volumes off, over end-diastolic volume or the window's range of end-systolic volume; shape ()."""
+    return _over(subject, subject.course.volume_drift_ml, volume_at_stake_ml(subject))
+
+
+def esv_drift(subject: RunSubject) -> Measured:
+    """Return how far drift puts end-systolic volume off, over that at rest; 0 where it cannot be told, shape ()."""
+    return _over(subject, subject.course.volume_drift_ml, esv_at_stake_ml(subject))
+
+
+def _over(subject: RunSubject, drift: float, stake: float) -> Measured:
+    return single(abs(drift) * _share_in_use(subject) / stake)
 
 
 def _share_in_use(subject: RunSubject) -> float:
-    """Return what share of the time looked at indices are read from: the window of a preload-reduction run, all of a steady one."""
+    """Return what share of the drift reaches what is read: half at rest, what falls into the window of a preload-reduction run."""
     course, window = subject.course, subject.window
     if window is None or not course.last_s > course.first_s:
-        return 1.0
+        return OF_A_MEDIAN
     start_s = subject.start_s()
     return float(np.clip((start_s[window.last_at] - start_s[window.onset_at]) / (course.last_s - course.first_s), 0.0, 1.0))
 
@@ -40,14 +65,24 @@ PRESSURE = Check(
     title="Pressure does not drift",
     level=Level.RUN,
     measure=pressure_drift,
-    unit="mm[Hg]",
-    limits=Limits(
-        suspect_above=1.0, fail_above=2.0, basis="a run's mean is off by half: 1 mmHg, what a transducer is good to (BP22, from memory)"
-    ),
-    limits_rv=Limits(suspect_above=0.7, fail_above=1.0, basis="half of the left side's, whose pressures fall more; house default"),
-    reason="pressure drifts by {value:.1f} mmHg during the run, while volumes do not change with it (limit {limit:g} mmHg)",
+    unit="1",
+    limits=LIMITS,
+    reason="pressure drifts so that what is read from it is off by {value:.0%}, while volumes do not change with it (limit {limit:.0%})",
     remedy="let the transducer warm up; send zeros taken right before and after this run",
     spoils=PRESSURE_MOVED,
+    after_beats=True,
+)
+EDP = Check(
+    name="edp-drift",
+    title="End-diastolic pressure does not drift",
+    level=Level.RUN,
+    measure=edp_drift,
+    unit="1",
+    limits=LIMITS,
+    reason="pressure drifts so that end-diastolic pressure is off by {value:.0%}, while volumes do not change with it (limit {limit:.0%})",
+    remedy="let the transducer warm up; send zeros taken right before and after this run",
+    spoils=END_DIASTOLE,
+    run_kinds=("steady",),
     after_beats=True,
 )
 VOLUME = Check(
@@ -56,11 +91,21 @@ VOLUME = Check(
     level=Level.RUN,
     measure=volume_drift,
     unit="1",
-    limits=Limits(
-        suspect_above=0.03, fail_above=0.05, basis="5 % of EDV is what steadiness allows; in a ramp it bends Ees by as much (derived)"
-    ),
-    reason="volume drifts by {value:.0%} of what is read from it, while pressures do not change with it (limit {limit:.0%})",
+    limits=LIMITS,
+    reason="volume drifts so that what is read from it is off by {value:.0%}, while pressures do not change with it (limit {limit:.0%})",
     remedy="repeat the run once the volume signal is stable; calibrate parallel volume right before it",
     spoils=VOLUME_MOVED,
+    after_beats=True,
+)
+ESV = Check(
+    name="esv-drift",
+    title="End-systolic volume does not drift",
+    level=Level.RUN,
+    measure=esv_drift,
+    unit="1",
+    limits=LIMITS,
+    reason="volume drifts so that end-systolic volume is off by {value:.0%}, while pressures do not change with it (limit {limit:.0%})",
+    remedy="repeat the run once the volume signal is stable; calibrate parallel volume right before it",
+    spoils=END_SYSTOLIC_VOLUME,
     after_beats=True,
 )

@@ -51,7 +51,10 @@ CHECK = Check(
     measure=irregularity,
     unit="1",
     limits=Limits(
-        suspect_above=0.06, fail_above=0.10, basis="house default; cycle length varies by about 0.2 in fibrillation (from memory)"
+        suspect_above=0.08,
+        fail_above=0.10,
+        basis="in sinus rhythm cycle length varies by 50 ms, in the fittest by 100 ms in a second (Nunan 2010, Pacing Clin Electrophysiol"
+        " 33:1407), in fibrillation by about 0.2 (both from memory)",
     ),
     reason="cycle length varies irregularly by {value:.0%}, while sinus rhythm was declared (limit {limit:.0%})",
     remedy="confirm the rhythm in acquisition.json",

@@ -1,8 +1,10 @@
 """Which beats of a preload-reduction run may carry a slope: from the onset of the fall to the reflex or the nadir.
 
 Beats before the onset repeat one load, the deflation runs back up another path, and once heart rate answers the baroreflex changes
-contractility: heart rate within 10 % of its value before the occlusion (customary, from memory), on a median of 5 beats so that one
-premature beat does not end the window. In declared atrial fibrillation there is no reflex cut. No limit on the length.
+contractility. The answer is told where heart rate, on a median of 5 beats so that one premature beat does not end the window, leaves its
+value before the occlusion by 5 % (5 to 10 % are customary, from memory), in a rhythm that varies by itself by up to 10 %; contractility
+has risen as long as heart rate has, so the window ends where the departure began. In declared atrial fibrillation there is no reflex cut.
+No limit on the length.
 """
 
 from __future__ import annotations
@@ -11,12 +13,20 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from metrics.arrays import BoolArray, FloatArray, running_median
+from metrics.arrays import BoolArray, FloatArray, robust_sd, running_median
 from metrics.signals.beats import Beats
 from metrics.signals.facts import RunFacts
 
 MEDIAN_BEATS = 5
-REFLEX_SHARE = 0.10
+REFLEX_SHARES = (0.05, 0.10)
+"""The least and the most by which heart rate must change to be a reflex: the edges of what is customary (from memory)."""
+
+OWN_VARIATIONS = 4.0
+"""Between these edges, how many standard deviations of the change from beat to beat: neighbours go together, so it must be many."""
+
+BEGUN_SHARE = 0.025
+"""In a calm rhythm a departure that tells a reflex has begun where it came half way, else where it is told; house default."""
+
 ONSET_SHARE = 0.05
 """The onset is where EDV has gone 5 % of the whole fall; house default."""
 
@@ -91,16 +101,31 @@ def _deflated(beats: Beats, offs: list[float], onset: int, nadir: int) -> tuple[
 
 
 def is_at_usual_rate(beats: Beats, onset: int, facts: RunFacts) -> BoolArray:
-    """Return which beats come within 10 % of the rate before the onset, shape (n_beats,); all where that cannot be told."""
+    """Return which beats come at the rate before the onset, shape (n_beats,); all where that cannot be told."""
+    change, bound, _ = _rate_change(beats, onset, facts)
+    return np.asarray(~(np.abs(change) > bound), dtype=bool)
+
+
+def _rate_change(beats: Beats, onset: int, facts: RunFacts) -> tuple[FloatArray, float, float]:
+    """Return by how much of it heart rate is above that before the onset, shape (n_beats,), and what tells a reflex, and its beginning."""
     if facts.rhythm == "atrial-fibrillation":
-        return np.ones(len(beats), dtype=bool)
+        return np.zeros(len(beats)), *REFLEX_SHARES
     before = beats.rr_s[max(0, onset - 2 * MEDIAN_BEATS) : onset + 1]
     usual_s = float(np.nanmedian(before)) if np.isfinite(before).any() else float("nan")
-    rate_change = usual_s / running_median(beats.rr_s, MEDIAN_BEATS) - 1.0
-    return np.asarray(~(np.abs(rate_change) > REFLEX_SHARE), dtype=bool)
+    steps = np.diff(beats.rr_s)
+    # white variation doubles its variance in differences, and a trend leaves them
+    own = robust_sd(steps[np.isfinite(steps)]) / float(np.sqrt(2.0)) / usual_s if np.isfinite(steps).any() else 0.0
+    told = float(np.clip(OWN_VARIATIONS * own, *REFLEX_SHARES))
+    begun = told if told > REFLEX_SHARES[0] else BEGUN_SHARE
+    return usual_s / running_median(beats.rr_s, MEDIAN_BEATS) - 1.0, told, begun
 
 
 def _first_reflex_beat(beats: Beats, onset: int, facts: RunFacts) -> int | None:
-    """Return the first beat whose heart rate left the band around its value before the onset, None where that cannot be told."""
-    out = np.flatnonzero(~is_at_usual_rate(beats, onset, facts)[onset + 1 :])
-    return None if out.size == 0 else onset + 1 + int(out[0])
+    """Return the beat at which heart rate begins to leave the band around its value before the onset, None where that cannot be told."""
+    change, bound, begun = _rate_change(beats, onset, facts)
+    out = np.flatnonzero(np.abs(change[onset + 1 :]) > bound)
+    if out.size == 0:
+        return None
+    told = onset + 1 + int(out[0])
+    calm = np.flatnonzero(~(change[onset:told] * np.sign(change[told]) > begun))
+    return onset + 1 + int(calm[-1]) if calm.size else onset + 1

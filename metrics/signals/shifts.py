@@ -13,7 +13,7 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 import numpy as np
-from scipy import stats
+from scipy.special import stdtrit
 
 from metrics.arrays import BoolArray, FloatArray, IntArray
 
@@ -22,6 +22,9 @@ BEATS_ASIDE = 20
 """How many beats on each side of an instant a step is looked for in: enough for a breath, few enough for a slow change; house default."""
 
 LEAST_ASIDE = 4
+MOST_PLACES = 150
+"""Beyond so many beats a step is looked for at every n-th: it is then placed to a few beats of the twenty on each side; house default."""
+
 STILL = 2.0
 """A pressure is taken not to have changed where its change is below this many standard errors; customary."""
 
@@ -29,6 +32,7 @@ MOST_CORRELATED = 0.8
 FALSE_ALARMS = 0.0003
 """How often a sound run may show a shift of any size; divided by the number of instants tried. House default."""
 
+TOO_ALIKE = 1e-9
 ADVANTAGE = 0.7
 """A step is told from a drift where it leaves less than this share of the misfit the drift leaves; house default."""
 
@@ -130,7 +134,7 @@ def steps(points: LoadPoints, *, bent: bool) -> tuple[IntArray, Shifts, Shifts]:
     count = points.time_s.size
     if count < LEAST_BEATS:
         return np.zeros(1, dtype=np.int64), _nothing(), _nothing()
-    before = np.arange(LEAST_ASIDE, count - LEAST_ASIDE + 1)
+    before = np.arange(LEAST_ASIDE, count - LEAST_ASIDE + 1, -(-count // MOST_PLACES))
     place = before[:, None] + np.arange(-min(BEATS_ASIDE, count), min(BEATS_ASIDE, count))
     weight = ((place >= 0) & (place < count)).astype(np.float64)
     beside = points.at(np.clip(place, 0, count - 1))
@@ -148,7 +152,7 @@ class Course:
     """What moved in the sensors during one run; 0 where nothing can be told from zero, NaN where the beats do not tell.
 
     Steps are those before the first beat at ``pressure_step_s`` and ``volume_step_s`` (NaN for none); drifts run from ``first_s`` to
-    ``last_s``, the first and last beat looked at.
+    ``last_s``, the first and last beat looked at. A step or drift of less than ``*_open`` would not have been told.
     """
 
     pressure_step_mmhg: float
@@ -159,12 +163,16 @@ class Course:
     volume_drift_ml: float
     first_s: float
     last_s: float
+    pressure_step_open_mmhg: float
+    volume_step_open_ml: float
+    pressure_drift_open_mmhg: float
+    volume_drift_open_ml: float
 
 
 def course(points: LoadPoints, *, bent: bool) -> Course:
     """Return what moved in the sensors while the points' beats were recorded: at once, or else evenly."""
     if points.time_s.size < LEAST_BEATS:
-        return Course(*(float("nan") for _ in range(8)))
+        return Course(*(float("nan") for _ in range(12)))
     before, at_once, evenly = steps(points, bent=bent)
     sharp = at_once.misfit < ADVANTAGE * evenly.misfit
     pressure_step, pressure_at = _sharpest(at_once.pressure_mmhg, at_once.pressure_se_mmhg, at_once, sharp)
@@ -179,6 +187,10 @@ def course(points: LoadPoints, *, bent: bool) -> Course:
         volume_drift_ml=0.0 if volume_step else _told(whole.volume_ml, whole.volume_se_ml, whole.freedom),
         first_s=float(points.time_s[0]),
         last_s=float(points.time_s[-1]),
+        pressure_step_open_mmhg=_least_told(at_once.pressure_se_mmhg, at_once.freedom),
+        volume_step_open_ml=_least_told(at_once.volume_se_ml, at_once.freedom),
+        pressure_drift_open_mmhg=_least_told(whole.pressure_se_mmhg, whole.freedom),
+        volume_drift_open_ml=_least_told(whole.volume_se_ml, whole.freedom),
     )
 
 
@@ -201,9 +213,19 @@ def _told(shift: FloatArray, error: FloatArray, freedom: FloatArray) -> float:
 
 def is_told_from_zero(shift: FloatArray, error: FloatArray, freedom: FloatArray) -> BoolArray:
     """Return which shifts differ from zero beyond what `FALSE_ALARMS` allows for so many; shape of ``shift``."""
-    most = stats.t.ppf(1.0 - 0.5 * FALSE_ALARMS / max(shift.size, 1), np.maximum(freedom, 1.0))
-    told: BoolArray = np.isfinite(shift) & (np.abs(shift) > most * error)
+    told: BoolArray = np.isfinite(shift) & (np.abs(shift) > _most_errors(freedom) * error)
     return told
+
+
+def _most_errors(freedom: FloatArray) -> FloatArray:
+    """Return how many standard errors chance may reach; shape of ``freedom``."""
+    return np.asarray(stdtrit(np.maximum(freedom, 1.0), 1.0 - 0.5 * FALSE_ALARMS / max(freedom.size, 1)), dtype=np.float64)
+
+
+def _least_told(error: FloatArray, freedom: FloatArray) -> float:
+    """Return the smallest shift that would surely be told at most of the places looked at, infinite where none would."""
+    least = (_most_errors(freedom) + STILL) * error
+    return float(np.median(np.where(np.isfinite(least), least, np.inf)))
 
 
 @dataclass(frozen=True, slots=True)
@@ -218,32 +240,45 @@ class _Off:
 
 
 def _off_line(y: FloatArray, x: FloatArray, form: FloatArray, weight: FloatArray, *, bent: bool) -> _Off:
-    """Regress ``y`` on ``x`` and the form, row by row."""
+    """Regress ``y`` on ``x`` and the form, row by row: both are freed of the relation first, what is left is one ratio a row.
+
+    Partial regression (Frisch and Waugh 1933, Econometrica 1:387, from memory) gives what the whole regression gives, and needs no matrix.
+    """
     counted = weight.sum(axis=1)
-    centre = np.sum(weight * x, axis=1) / counted
-    away = weight * (x - centre[:, None])
+    ones = weight / np.sqrt(counted)[:, None]
+    away = _freed(weight * x, [ones])
     scale = np.sqrt(np.sum(away**2, axis=1) / counted)
     scale = np.where(scale > 0.0, scale, 1.0)
     level = away / scale[:, None]
-    design = np.stack([weight, level, *([level**2] if bent else []), weight * form], axis=2)
-    fitted, residual, inverse = _solved(design, weight * y)
-    _, without, _ = _solved(design[:, :, :-1], weight * y)
-    square, square_without = np.sum(residual**2, axis=1), np.sum(without**2, axis=1)
-    freedom = counted - design.shape[2]
+    across = [ones, level / np.sqrt(counted)[:, None]]
+    bend = _freed(level**2, across) if bent else np.zeros_like(level)
+    bend_size = np.sqrt(np.sum(bend**2, axis=1))
+    if bent:
+        across.append(bend / np.where(bend_size > 0.0, bend_size, 1.0)[:, None])
+    own, moved = _freed(weight * y, across), _freed(weight * form, across)
+    size = np.sum(moved**2, axis=1)
+    # a form that the relation already explains cannot be told from it
+    size = np.where(size > TOO_ALIKE * np.sum(form**2 * weight, axis=1), size, np.nan)
+    off = np.sum(own * moved, axis=1) / size
+    residual = own - off[:, None] * moved
+    square, square_without = np.sum(residual**2, axis=1), np.sum(own**2, axis=1)
+    freedom = counted - len(across) - 1
     with np.errstate(divide="ignore", invalid="ignore"):
         correlated = np.clip(np.sum(residual[:, 1:] * residual[:, :-1], axis=1) / square, 0.0, MOST_CORRELATED)
-        error = np.sqrt(np.abs(square / freedom * (1.0 + correlated) / (1.0 - correlated) * inverse[:, -1, -1]))
-        slope, left = fitted[:, 1] / scale, square / square_without
-    off, error = (np.where(freedom > 0.0, value, np.nan) for value in (fitted[:, -1], error))
+        error = np.sqrt(square / freedom * (1.0 + correlated) / (1.0 - correlated) / size)
+        explained = weight * (y - off[:, None] * form)
+        curvature = np.sum(explained * bend, axis=1) / np.where(bend_size > 0.0, bend_size, 1.0) ** 2
+        slope = (np.sum(explained * level, axis=1) - curvature * np.sum(level**3, axis=1)) / (counted * scale)
+        left = square / square_without
+    off, error = (np.where(freedom > 0.0, value, np.nan) for value in (off, error))
     return _Off(off, error, slope, freedom, left)
 
 
-def _solved(design: FloatArray, y: FloatArray) -> tuple[FloatArray, FloatArray, FloatArray]:
-    """Return coefficients, residuals and inverse normal matrices of every row's regression."""
-    turned = np.swapaxes(design, 1, 2)
-    inverse = np.asarray(np.linalg.pinv(turned @ design, hermitian=True), dtype=np.float64)
-    fitted = (inverse @ (turned @ y[:, :, None]))[:, :, 0]
-    return fitted, y - (design @ fitted[:, :, None])[:, :, 0], inverse
+def _freed(values: FloatArray, across: list[FloatArray]) -> FloatArray:
+    """Return each row without its part along the unit rows of ``across``, which stand at right angles to each other."""
+    for unit in across:
+        values = values - np.sum(values * unit, axis=1, keepdims=True) * unit
+    return values
 
 
 def _nothing() -> Shifts:

@@ -42,6 +42,7 @@ def shallow(floor):
 
 def test_a_fall_of_a_fifth_passes_and_one_too_small_for_a_slope_fails():
     assert [worst(falling(share), "preload-adequacy") for share in (0.4, 0.25, 0.17, 0.05, 0.0)] == [P, P, S, F, F]
+    assert [worst(falling(share), "preload-adequacy-work") for share in (0.4, 0.25, 0.17, 0.14, 0.0)] == [P, P, S, F, F]
 
 
 def test_an_occlusion_ever_shallower_never_improves_the_verdict():
