@@ -89,7 +89,7 @@ def test_a_change_of_heart_rate_within_five_per_cent_is_no_reflex():
 
 
 def test_a_change_of_heart_rate_within_ten_per_cent_is_no_reflex_in_a_rhythm_that_varies():
-    rr_s = [0.8, 0.84] * 7 + [0.76, 0.80] * ((COUNT - 14) // 2 + 1)
+    rr_s = [0.8, 0.84] * 7 + [0.78, 0.82] * ((COUNT - 14) // 2 + 1)
     assert window(rr_s=rr_s[:COUNT], events=on(8)).ended_by == "nadir"
 
 
