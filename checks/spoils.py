@@ -166,8 +166,8 @@ VOLUME_BOTTOM = WORK | END_SYSTOLE - {"ESP"} | frozenset(["ESV", "ESVI", "SV", "
 VOLUME_END_SYSTOLE = VOLUME_BOTTOM - WORK | frozenset(["PVA", "efficiency", "EDPVR_beta", "EDPVR_stiffness", "V20", "V30", "dPdt_max_EDV"])
 """What is read from a volume at one instant which an extreme chooses, and lines against volume: noise chooses with it."""
 
-INTERCEPTS = frozenset(["V0", "V100", "V120", "Vw", "PRSW", "PE", "PVA", "efficiency", "V20", "V30"])
-"""What lines against a noisy volume say far from the points they go through."""
+INTERCEPTS = frozenset(["Ees", "Ees_Ea", "V0", "V100", "V120", "Vw", "PRSW", "PE", "PVA", "efficiency", "V20", "V30"])
+"""What lines against a noisy volume say: noise flattens them, and most so far from the points they go through."""
 
 STEADY_STATE = frozenset(
     ["EDV", "EDVI", "ESV", "ESVI", "SV", "SVI", "EF", "CO", "CI", "EDP", "ESP", "Pmax", "Ea", "EaI", "SW", "dPdt_max", "dPdt_min"]
