@@ -118,13 +118,17 @@ class Outcome:
 
 @dataclass(frozen=True, slots=True)
 class Examined:
-    """One case: its outcomes, the checks that did not pass, of runs and acquisition, and those that should not have."""
+    """One case: its outcomes, the checks of runs and acquisition that failed or were suspect anywhere, those that should not have passed.
+
+    ``rejecting`` are the checks of beats that rejected one.
+    """
 
     case: Case
     outcomes: tuple[Outcome, ...]
     failed: frozenset[str]
     suspect: frozenset[str]
     expected: frozenset[str]
+    rejecting: frozenset[str] = frozenset()
 
     @property
     def matters(self) -> bool:
@@ -134,7 +138,7 @@ class Examined:
     @property
     def is_named(self) -> bool:
         """Return whether a check made for this fault did not pass."""
-        return bool(self.expected & (self.failed | self.suspect))
+        return bool(self.expected & (self.failed | self.suspect | self.rejecting))
 
 
 @dataclass(frozen=True, slots=True)
@@ -188,7 +192,7 @@ def examined(case: Case) -> Examined:
         unguarded = _values(_assessed(injected.acquisition, guarded=False))
     failed, suspect = _named(found)
     if is_copied:
-        failed, suspect = failed | {COPIED_SIGNAL.name}, suspect - {COPIED_SIGNAL.name}
+        failed = failed | {COPIED_SIGNAL.name}
     reach = {(one.stage, one.index): one for one in reached(acquisition, case.ladder, case.severity)}
     doubtful = _doubtful(case, acquisition, twin)
     names = frozenset(one.check for one in injected.expected)
@@ -210,7 +214,7 @@ def examined(case: Case) -> Examined:
             kind = CAUTIOUSLY if is_reached or (case.fault in DISTRUSTED and names >= set(blamed) > set()) else NEEDLESSLY
         told = kind == WRONG and (value.holds(expected.value) or value.holds(actual))
         outcomes.append(Outcome(case, index, kind, expected.value, actual, value.value, open_value.value, shift, told, blamed))
-    return Examined(case, tuple(outcomes), failed, suspect, names)
+    return Examined(case, tuple(outcomes), failed, suspect, names, _rejecting(found))
 
 
 def _is_right(index: str, value: float, sound: _Published, true: float) -> bool:
@@ -308,12 +312,18 @@ def _half(row: Mapping[str, Any]) -> float:
 
 
 def _named(found: Assessment | None) -> tuple[frozenset[str], frozenset[str]]:
-    """Return the checks of runs and acquisition that failed, and those that were suspect at most."""
+    """Return the checks of runs and acquisition that failed, and those that were suspect, in any of them."""
     if found is None:
         return _READABLE, frozenset()
     above = [(str(row["check"]), row["verdict"]) for row in found.rejections if _card(row).level is not Level.BEAT]
     failed = frozenset(name for name, verdict in above if verdict == "fail")
-    return failed, frozenset(name for name, verdict in above if verdict == "suspect") - failed
+    return failed, frozenset(name for name, verdict in above if verdict == "suspect")
+
+
+def _rejecting(found: Assessment | None) -> frozenset[str]:
+    """Return the checks of beats that rejected a beat."""
+    rows = () if found is None else found.rejections
+    return frozenset(str(row["check"]) for row in rows if row["decisive"] and _card(row).level is Level.BEAT)
 
 
 def _card(row: Mapping[str, object]) -> Check:

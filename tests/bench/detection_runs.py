@@ -25,7 +25,7 @@ from pathlib import Path
 
 from checks import ALL as CHECKS
 from checks.acquisition.visits_agree import ALL as ACROSS_VISITS
-from checks.check import Level
+from checks.check import Check, Level
 from flows.sources.simulated.corpus import hearts
 from flows.sources.simulated.heart import HEARTS
 from tests.bench.detection_cases import (
@@ -210,12 +210,19 @@ def unnamed(found: Sequence[Examined]) -> list[str]:
 
 
 def never_fired(found: Sequence[Examined]) -> list[str]:
-    """Return the checks of runs and acquisitions that neither failed nor were suspect in any case.
+    """Return the verdicts that checks of runs and acquisitions declare a bound for and that no case had, as "name fail".
 
     Those across a subject's visits need several acquisitions: `tests/flows/test_jumps_across_visits.py` makes them fire.
     """
-    fired = set().union(*(one.failed | one.suspect for one in found)) | {check.name for check in ACROSS_VISITS}
-    return [check.name for check in CHECKS if check.level is not Level.BEAT and check.name not in fired]
+    fired = {f"{name} fail" for one in found for name in one.failed} | {f"{name} suspect" for one in found for name in one.suspect}
+    judged = [check for check in CHECKS if check.level is not Level.BEAT and check not in ACROSS_VISITS]
+    return [verdict for check in judged for verdict in declared(check) if verdict not in fired]
+
+
+def declared(check: Check) -> list[str]:
+    """Return the verdicts beside pass that a check has a bound for, as "name fail"."""
+    bounds = {bound.split("_")[0] for limits in (check.limits, check.limits_rv) if limits is not None for bound in limits.declared()}
+    return [f"{check.name} {verdict}" for verdict in sorted(bounds)]
 
 
 def cries(clean: Sequence[Clean]) -> list[str]:
