@@ -17,11 +17,14 @@ from metrics.indices.card import Index
 
 def explain(name: str) -> str:
     """Return the explanation of a check or an index; raises InputError ("did you mean") for an unknown name."""
-    checks, indices = {check.name: check for check in CHECKS}, {index.name: index for index in INDICES}
+    checks = {check.name: check for check in CHECKS}
+    indices: dict[str, list[Index]] = {}
+    for index in INDICES:
+        indices.setdefault(index.name, []).append(index)
     if name in checks:
         return _check(checks[name])
     if name in indices:
-        return _index(indices[name])
+        return "\n\n".join(_index(index) for index in sorted(indices[name], key=lambda index: not index.primary))
     remedy = did_you_mean(name, [*checks, *indices])
     problem = "is neither a check nor an index"
     raise InputError(problem, file="explain", field="NAME", value=name, remedy=remedy)
@@ -103,7 +106,7 @@ def _index(index: Index) -> str:
             _source_text(index.compute, index),
             "",
             f"Unit: {index.unit}",
-            f"Estimator: {index.estimator}",
+            f"Estimator: {index.estimator}" + ("" if index.primary else " (beside the primary one, never mixed with it)"),
             f"Needs: {index.needs}",
             "Withheld when one of these fails: " + ", ".join(spoilers),
         ]

@@ -9,6 +9,7 @@ from __future__ import annotations
 from collections import Counter
 from collections.abc import Sequence
 from dataclasses import dataclass, replace
+from functools import reduce
 
 import numpy as np
 
@@ -18,6 +19,8 @@ from metrics.arrays import BoolArray
 from metrics.indices import ALL
 from metrics.indices.card import Estimate, Index, RunBeats, Source, StageBeats, Withheld
 from metrics.indices.end_systolic_elastance import VOLUME_INTERCEPT
+from metrics.indices.intervals import calibrated_interval
+from metrics.signals.uncertainty import CalibrationUncertainty, calibration_uncertainty
 
 PRE_ONSET = "pre-onset"
 PUBLISHED, WITHHELD = "published", "withheld"
@@ -33,6 +36,11 @@ class Stage:
     failed: tuple[Check, ...]
     reasons: dict[str, str]
     bsa_m2: float | None = None
+
+    @property
+    def chamber(self) -> str:
+        """Return the chamber the stage's runs were recorded in."""
+        return self.runs[0].subject.facts.chamber if self.runs else "LV"
 
     def of_kind(self, kind: str) -> tuple[RunVerdict, ...]:
         """Return the stage's runs of one kind."""
@@ -72,7 +80,7 @@ def _rows_of(index: Index, stage: Stage, v0_ml: float | None) -> list[IndexRow]:
     steady, pre_onset = _steady_runs(stage, index.name)
     preload = _preload_runs(stage, index.name)
     chief = _chief(preload)
-    beats = StageBeats(steady, chief, v0_ml, pre_onset, stage.bsa_m2)
+    beats = StageBeats(steady, chief, v0_ml, pre_onset, stage.bsa_m2, stage.chamber)
     spoiled = spoilers(index.name, stage.failed)
     lost = [run for run in stage.runs if _matters(run, index) and (not run.is_usable or spoilers(index.name, run.failed))]
     why = [stage.reasons[check.name] for check in spoiled] + [_run_reason(run, index) for run in lost]
@@ -82,14 +90,22 @@ def _rows_of(index: Index, stage: Stage, v0_ml: float | None) -> list[IndexRow]:
             for run in preload
             if run not in chief
         ]
-    rows = [_row(index, beats, run=None, spoiled=bool(spoiled), why=why)]
+    doubt = _uncertainty(stage, index)
+    rows = [_row(index, beats, doubt, run=None, spoiled=bool(spoiled), why=why)]
     for run in steady if index.source is Source.STEADY else preload:
         alone = replace(beats, steady=(run,)) if index.source is Source.STEADY else replace(beats, preload=(run,))
-        rows.append(_row(index, alone, run=run.run, spoiled=bool(spoiled), why=[stage.reasons[check.name] for check in spoiled]))
+        rows.append(_row(index, alone, doubt, run=run.run, spoiled=bool(spoiled), why=[stage.reasons[check.name] for check in spoiled]))
     return rows
 
 
-def _row(index: Index, beats: StageBeats, *, run: str | None, spoiled: bool, why: list[str]) -> IndexRow:
+def _uncertainty(stage: Stage, index: Index) -> CalibrationUncertainty:
+    """Return how uncertain the calibration of the runs is that may bear an index."""
+    bearing = [run.subject.facts for run in stage.runs if _matters(run, index)] or [run.subject.facts for run in stage.runs]
+    found = [calibration_uncertainty(facts.pressure, facts.volume) for facts in bearing]
+    return reduce(CalibrationUncertainty.joined, found) if found else CalibrationUncertainty()
+
+
+def _row(index: Index, beats: StageBeats, doubt: CalibrationUncertainty, *, run: str | None, spoiled: bool, why: list[str]) -> IndexRow:
     """Return one row: the estimate, or why there is none."""
     estimate: Estimate | None = None
     reason = "; ".join(why) or None
@@ -103,15 +119,16 @@ def _row(index: Index, beats: StageBeats, *, run: str | None, spoiled: bool, why
     if estimate is not None:
         reason = "; ".join([*why, *(f"without {told}" for told in estimate.left_out)]) or None
     status = WITHHELD if estimate is None else PUBLISHED
+    low, high = (None, None) if estimate is None else calibrated_interval(estimate, index.sensitivity(beats, estimate.value), doubt)
     return {
         "run": run,
         "index": index.name,
         "estimator": PRE_ONSET if beats.pre_onset and index.source is Source.STEADY else index.estimator,
-        "primary": run is None,
+        "primary": run is None and index.primary,
         "value": None if estimate is None else estimate.value,
         "unit": index.unit,
-        "ci_low": None,
-        "ci_high": None,
+        "ci_low": low,
+        "ci_high": high,
         "fit_ci_low": None if estimate is None else _bounded(estimate.fit_low),
         "fit_ci_high": None if estimate is None else _bounded(estimate.fit_high),
         "beats": None if estimate is None else estimate.beats,

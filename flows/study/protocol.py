@@ -222,7 +222,7 @@ def _check_problems(protocol: Protocol, file: str) -> list[InputError]:
 
     checks = {check.name: check for check in CHECKS}
     of_beats = [check.name for check in CHECKS if check.level == "beat"]
-    lockable = [*checks, *(index.name for index in INDICES)]
+    lockable = [*checks, *dict.fromkeys(index.name for index in INDICES)]
     problems = [
         *_unknown_names("study.lock", protocol.study.lock, lockable, file, "is neither a check nor an index"),
         *_unknown_names("policy.required_checks", protocol.policy.required_checks, of_beats, file, "is not a check of beats"),

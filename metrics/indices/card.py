@@ -42,6 +42,19 @@ class Estimate:
     left_out: tuple[str, ...] = ()
 
 
+@dataclass(frozen=True, slots=True)
+class Sensitivity:
+    """By how much a value moves with the calibration, first order: per relative error of a gain, and per unit of what is added.
+
+    ``pressure_gain`` of 3.0 means that 1 % more gain adds 0.03. In the index's unit, per 1, mmHg, 1 and mL.
+    """
+
+    pressure_gain: float = 0.0
+    pressure_mmhg: float = 0.0
+    volume_gain: float = 0.0
+    volume_ml: float = 0.0
+
+
 @dataclass(frozen=True)
 class RunBeats:
     """The beats of one run that an index may use: ``chosen`` has shape (n_beats,).
@@ -82,6 +95,7 @@ class StageBeats:
     v0_ml: float | None = None
     pre_onset: bool = False
     bsa_m2: float | None = None
+    chamber: str = "LV"
 
     def steady_column(self, name: str) -> FloatArray:
         """Return one per-beat quantity over the chosen beats of all steady runs."""
@@ -98,11 +112,21 @@ def _joined(parts: list[FloatArray]) -> FloatArray:
     return np.concatenate(parts) if parts else np.empty(0)
 
 
+def powers(pressure_gain: float = 0.0, volume_gain: float = 0.0) -> Callable[[StageBeats, float], Sensitivity]:
+    """Return the sensitivity of a value that goes with powers of the gains and that no offset moves.
+
+    >>> powers(pressure_gain=1.0, volume_gain=-1.0)(StageBeats(), 2.5)
+    Sensitivity(pressure_gain=2.5, pressure_mmhg=0.0, volume_gain=-2.5, volume_ml=0.0)
+    """
+    return lambda _, value: Sensitivity(pressure_gain=pressure_gain * value, volume_gain=volume_gain * value)
+
+
 @dataclass(frozen=True)
 class Index:
     """One published index: ``compute`` takes the stage's beats and returns an `Estimate` or raises `Withheld`.
 
-    ``unit`` is UCUM. ``estimator`` tells kinds apart that must never be mixed; ``needs`` says in words what it is made of.
+    ``unit`` is UCUM. ``estimator`` tells kinds apart that must never be mixed, one of them is ``primary``; ``needs`` says in words what
+    it is made of; ``sensitivity`` how errors of the calibration move it.
     """
 
     name: str
@@ -112,4 +136,6 @@ class Index:
     source: Source
     compute: Callable[[StageBeats], Estimate]
     needs: str
+    sensitivity: Callable[[StageBeats, float], Sensitivity]
+    primary: bool = True
     revision: int = 1

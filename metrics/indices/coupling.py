@@ -8,8 +8,9 @@ from __future__ import annotations
 import numpy as np
 
 from metrics.indices.arterial_elastance import arterial_elastance
-from metrics.indices.card import Estimate, Index, Source, StageBeats
+from metrics.indices.card import Estimate, Index, Sensitivity, Source, StageBeats
 from metrics.indices.end_systolic_elastance import ESTIMATOR, end_systolic_elastance
+from metrics.indices.pressures import end_systolic_pressure
 
 
 def coupling(stage: StageBeats) -> Estimate:
@@ -27,6 +28,10 @@ def coupling(stage: StageBeats) -> Estimate:
     return Estimate(ratio, low, high, ees.beats, ees.runs, ees.left_out)
 
 
+def _sensitivity(stage: StageBeats, value: float) -> Sensitivity:
+    return Sensitivity(pressure_mmhg=-value / end_systolic_pressure(stage).value)
+
+
 COUPLING = Index(
     name="Ees_Ea",
     title="Ventriculo-arterial coupling ratio",
@@ -35,4 +40,5 @@ COUPLING = Index(
     source=Source.BOTH,
     compute=coupling,
     needs="what Ees needs, and at least 3 accepted steady beats",
+    sensitivity=_sensitivity,
 )

@@ -6,7 +6,7 @@ negative V0 follows from a curved relation (Kass 1989, Circulation 79:167, read 
 
 from __future__ import annotations
 
-from metrics.indices.card import Estimate, Index, RunBeats, Source, StageBeats
+from metrics.indices.card import Estimate, Index, RunBeats, Sensitivity, Source, StageBeats, powers
 from metrics.indices.slopes import intercept_estimate, pooled_lines, slope_estimate
 from metrics.stats.lines import Line
 
@@ -29,6 +29,10 @@ def volume_intercept(stage: StageBeats) -> Estimate:
     return intercept_estimate(pooled_lines(stage, end_systolic_line_of))
 
 
+def _intercept_sensitivity(stage: StageBeats, value: float) -> Sensitivity:
+    return Sensitivity(pressure_mmhg=-1.0 / end_systolic_elastance(stage).value, volume_gain=value, volume_ml=1.0)
+
+
 END_SYSTOLIC_ELASTANCE = Index(
     name="Ees",
     title="End-systolic elastance",
@@ -37,6 +41,7 @@ END_SYSTOLIC_ELASTANCE = Index(
     source=Source.PRELOAD,
     compute=end_systolic_elastance,
     needs=NEEDS,
+    sensitivity=powers(pressure_gain=1.0, volume_gain=-1.0),
 )
 VOLUME_INTERCEPT = Index(
     name="V0",
@@ -46,4 +51,5 @@ VOLUME_INTERCEPT = Index(
     source=Source.PRELOAD,
     compute=volume_intercept,
     needs=NEEDS,
+    sensitivity=_intercept_sensitivity,
 )

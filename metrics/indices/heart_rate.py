@@ -5,7 +5,7 @@ Common practice, no source.
 
 from __future__ import annotations
 
-from metrics.indices.card import Estimate, Index, Source, StageBeats
+from metrics.indices.card import Estimate, Index, Source, StageBeats, powers
 from metrics.indices.steady import median_estimate
 
 
@@ -22,4 +22,5 @@ HEART_RATE = Index(
     source=Source.STEADY,
     compute=heart_rate,
     needs="the accepted beats of the stage's steady runs",
+    sensitivity=powers(),
 )

@@ -6,7 +6,7 @@ differ by 1-4 mmHg (from memory), so the rule stands in the estimator's name. dP
 
 from __future__ import annotations
 
-from metrics.indices.card import Estimate, Index, Source, StageBeats
+from metrics.indices.card import Estimate, Index, Sensitivity, Source, StageBeats, powers
 from metrics.indices.steady import median_estimate, median_of
 
 _STEADY = "the accepted beats of the stage's steady runs"
@@ -17,6 +17,11 @@ def end_systolic_pressure(stage: StageBeats) -> Estimate:
     return median_estimate(stage.steady_end_systole[0])
 
 
+def read_from_zero(_stage: StageBeats, value: float) -> Sensitivity:
+    """Return the sensitivity of a pressure: it scales with the gain and goes along with the zero."""
+    return Sensitivity(pressure_gain=value, pressure_mmhg=1.0)
+
+
 END_DIASTOLIC_PRESSURE = Index(
     name="EDP",
     title="End-diastolic pressure",
@@ -25,6 +30,7 @@ END_DIASTOLIC_PRESSURE = Index(
     source=Source.STEADY,
     compute=median_of("edp_mmhg"),
     needs=_STEADY,
+    sensitivity=read_from_zero,
 )
 END_SYSTOLIC_PRESSURE = Index(
     name="ESP",
@@ -34,6 +40,7 @@ END_SYSTOLIC_PRESSURE = Index(
     source=Source.STEADY,
     compute=end_systolic_pressure,
     needs=f"{_STEADY}, and V0 of the stage's end-systolic line where there is one",
+    sensitivity=read_from_zero,
 )
 PEAK_PRESSURE = Index(
     name="Pmax",
@@ -43,6 +50,7 @@ PEAK_PRESSURE = Index(
     source=Source.STEADY,
     compute=median_of("pmax_mmhg"),
     needs=_STEADY,
+    sensitivity=read_from_zero,
 )
 STEEPEST_RISE = Index(
     name="dPdt_max",
@@ -52,6 +60,7 @@ STEEPEST_RISE = Index(
     source=Source.STEADY,
     compute=median_of("dpdt_max_mmhg_per_s"),
     needs=_STEADY,
+    sensitivity=powers(pressure_gain=1.0),
 )
 STEEPEST_FALL = Index(
     name="dPdt_min",
@@ -61,4 +70,5 @@ STEEPEST_FALL = Index(
     source=Source.STEADY,
     compute=median_of("dpdt_min_mmhg_per_s"),
     needs=_STEADY,
+    sensitivity=powers(pressure_gain=1.0),
 )

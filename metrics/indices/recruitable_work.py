@@ -5,7 +5,7 @@ Glower 1985, Circulation 71:994 (from memory). Independent of volume gain and of
 
 from __future__ import annotations
 
-from metrics.indices.card import Estimate, Index, RunBeats, Source, StageBeats
+from metrics.indices.card import Estimate, Index, RunBeats, Source, StageBeats, powers
 from metrics.indices.slopes import pooled_lines, slope_estimate
 from metrics.signals.landmarks import landmark_noise_ml
 from metrics.stats.lines import Line, unattenuated_line
@@ -32,4 +32,5 @@ RECRUITABLE_WORK = Index(
     source=Source.PRELOAD,
     compute=recruitable_work,
     needs="at least 5 accepted beats in the usable window of a preload-reduction run, and a slope that can be told from zero",
+    sensitivity=powers(pressure_gain=1.0),
 )

@@ -5,10 +5,20 @@ Definitions common practice, no source. With regurgitation or a shunt SV is tota
 
 from __future__ import annotations
 
-from metrics.indices.card import Index, Source
-from metrics.indices.steady import median_of
+from metrics.indices.card import Index, Sensitivity, Source, StageBeats, powers
+from metrics.indices.steady import median_estimate, median_of
 
 _STEADY = "the accepted beats of the stage's steady runs"
+
+
+def placed(_stage: StageBeats, value: float) -> Sensitivity:
+    """Return the sensitivity of a volume's absolute place: it scales with the gain and goes along with the parallel volume."""
+    return Sensitivity(volume_gain=value, volume_ml=1.0)
+
+
+def _ejection_fraction(stage: StageBeats, value: float) -> Sensitivity:
+    return Sensitivity(volume_ml=-value / median_estimate(stage.steady_column("edv_ml")).value)
+
 
 END_DIASTOLIC_VOLUME = Index(
     name="EDV",
@@ -18,6 +28,7 @@ END_DIASTOLIC_VOLUME = Index(
     source=Source.STEADY,
     compute=median_of("edv_ml"),
     needs=_STEADY,
+    sensitivity=placed,
 )
 END_SYSTOLIC_VOLUME = Index(
     name="ESV",
@@ -27,6 +38,7 @@ END_SYSTOLIC_VOLUME = Index(
     source=Source.STEADY,
     compute=median_of("esv_ml"),
     needs=_STEADY,
+    sensitivity=placed,
 )
 STROKE_VOLUME = Index(
     name="SV",
@@ -36,6 +48,7 @@ STROKE_VOLUME = Index(
     source=Source.STEADY,
     compute=median_of("sv_ml"),
     needs=_STEADY,
+    sensitivity=powers(volume_gain=1.0),
 )
 EJECTION_FRACTION = Index(
     name="EF",
@@ -45,4 +58,5 @@ EJECTION_FRACTION = Index(
     source=Source.STEADY,
     compute=median_of("ef"),
     needs=_STEADY,
+    sensitivity=_ejection_fraction,
 )

@@ -17,7 +17,7 @@ from metrics.indices.card import Source
 from tests.checks.made_subjects import CHECKS, declared, judged_run, simulated
 
 KNOWN = frozenset(index.name for index in INDICES)
-BY_NAME = {index.name: index for index in INDICES}
+BY_NAME = {index.name: index for index in INDICES if index.primary}
 STEADY = frozenset(index.name for index in INDICES if index.source is Source.STEADY)
 REST = Conditions(duration_s=10.0)
 RAMP = Conditions(duration_s=14.0, occlusion=Occlusion(onset_s=4.0))

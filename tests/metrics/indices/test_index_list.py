@@ -1,5 +1,6 @@
 import importlib
 import pkgutil
+from collections import Counter
 
 import pytest
 
@@ -32,17 +33,21 @@ def modules():
 
 
 def test_the_first_indices_keep_their_names_and_units():
-    found = {index.name: index.unit for index in ALL}
+    found = {index.name: index.unit for index in ALL if index.primary}
     assert {name: found[name] for name in PUBLISHED} == PUBLISHED
 
 
 def test_no_card_is_forgotten_and_none_stands_twice():
     declared = [value for module in modules() for value in vars(module).values() if isinstance(value, Index)]
-    assert {index.name for index in declared} == {index.name for index in ALL}
-    assert len({index.name for index in ALL}) == len(ALL)
+    assert {(index.name, index.estimator) for index in declared} == {(index.name, index.estimator) for index in ALL}
+    assert len({(index.name, index.estimator) for index in ALL}) == len(ALL)
 
 
-@pytest.mark.parametrize("index", ALL, ids=lambda index: index.name)
+def test_every_index_has_one_primary_estimator():
+    assert Counter(index.name for index in ALL if index.primary) == dict.fromkeys((index.name for index in ALL), 1)
+
+
+@pytest.mark.parametrize("index", ALL, ids=lambda index: f"{index.name}-{index.estimator}")
 def test_a_card_says_what_a_reader_needs(index):
     assert index.title
     assert index.needs

@@ -5,7 +5,7 @@ from metrics.indices import ALL
 from metrics.indices.card import Source, StageBeats, Withheld
 from tests.metrics.made_beats import boxes, measured_run
 
-BY_NAME = {index.name: index for index in ALL}
+BY_NAME = {index.name: index for index in ALL if index.primary}
 EDVS_ML = np.linspace(150.0, 110.0, 9)
 STEADY = boxes([130.0] * 7, run="rest")
 """The worked rectangle: Ees 2.5, V0 10, Ea 2, EDV 130."""
