@@ -219,6 +219,6 @@ def _finite(value: float) -> float | None:
     return float(value) if np.isfinite(value) else None
 
 
-def spoilers(index: str, failed: Sequence[Check]) -> tuple[Check, ...]:
-    """Return which of the failed checks reach an index."""
-    return tuple(check for check in failed if index in check.spoils)
+def spoilers(indices: frozenset[str], failed: Sequence[Check]) -> tuple[Check, ...]:
+    """Return which of the failed checks reach one of these indices."""
+    return tuple(check for check in failed if check.spoils & indices)

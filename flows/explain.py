@@ -98,7 +98,7 @@ def _limits(label: str, limits: Limits) -> list[str]:
 
 
 def _index(index: Index) -> str:
-    spoilers = [check.name for check in CHECKS if index.name in check.spoils]
+    spoilers = [check.name for check in CHECKS if index.exposed & check.spoils]
     return "\n".join(
         [
             f"{index.name} (index, revision {index.revision}): {index.title}",

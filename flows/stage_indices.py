@@ -17,8 +17,8 @@ from checks.check import Check
 from checks.verdicts import RunVerdict, spoilers
 from metrics.arrays import BoolArray
 from metrics.indices import ALL
-from metrics.indices.card import Estimate, Index, RunBeats, Source, StageBeats, Withheld
-from metrics.indices.end_systolic_elastance import VOLUME_INTERCEPT
+from metrics.indices.card import Estimate, Index, RunBeats, Sensitivity, Source, StageBeats, Withheld
+from metrics.indices.end_systolic_elastance import END_SYSTOLIC_ELASTANCE, VOLUME_INTERCEPT
 from metrics.indices.intervals import calibrated_interval
 from metrics.signals.uncertainty import CalibrationUncertainty, calibration_uncertainty
 
@@ -62,27 +62,42 @@ def stages_of(runs: Sequence[RunVerdict], failed: tuple[Check, ...], reasons: di
     )
 
 
+@dataclass(frozen=True, slots=True)
+class StageValue:
+    """A row of the table, and what its interval was made of: None where it is withheld."""
+
+    row: IndexRow
+    estimate: Estimate | None
+    sensitivity: Sensitivity | None
+    doubt: CalibrationUncertainty
+
+
+def stage_values(stage: Stage) -> list[StageValue]:
+    """Return the stage's values: every index defined for the chamber, pooled over its runs, then each run that bears it."""
+    v0_ml = stage_v0_ml(stage)
+    return [value for index in ALL if index.chamber in (None, stage.chamber) for value in _values_of(index, stage, v0_ml)]
+
+
 def index_rows(stage: Stage) -> list[IndexRow]:
     """Return the stage's rows: one primary row an index, then one a run that bears it."""
-    v0_ml = stage_v0_ml(stage)
-    return [row for index in ALL for row in _rows_of(index, stage, v0_ml)]
+    return [value.row for value in stage_values(stage)]
 
 
 def stage_v0_ml(stage: Stage) -> float | None:
     """Return V0 of the stage's primary line, by which end-systole is found; None when there is no line."""
     try:
-        return VOLUME_INTERCEPT.compute(StageBeats(preload=_chief(_preload_runs(stage, "Ees")))).value
+        return VOLUME_INTERCEPT.compute(StageBeats(preload=_chief(_preload_runs(stage, END_SYSTOLIC_ELASTANCE)))).value
     except Withheld:
         return None
 
 
-def _rows_of(index: Index, stage: Stage, v0_ml: float | None) -> list[IndexRow]:
-    steady, pre_onset = _steady_runs(stage, index.name)
-    preload = _preload_runs(stage, index.name)
+def _values_of(index: Index, stage: Stage, v0_ml: float | None) -> list[StageValue]:
+    steady, pre_onset = _steady_runs(stage, index)
+    preload = _preload_runs(stage, index)
     chief = _chief(preload)
     beats = StageBeats(steady, chief, v0_ml, pre_onset, stage.bsa_m2, stage.chamber)
-    spoiled = spoilers(index.name, stage.failed)
-    lost = [run for run in stage.runs if _matters(run, index) and (not run.is_usable or spoilers(index.name, run.failed))]
+    spoiled = spoilers(index.exposed, stage.failed)
+    lost = [run for run in stage.runs if _matters(run, index) and (not run.is_usable or spoilers(index.exposed, run.failed))]
     why = [stage.reasons[check.name] for check in spoiled] + [_run_reason(run, index) for run in lost]
     if index.source is not Source.STEADY:
         why += [
@@ -91,11 +106,11 @@ def _rows_of(index: Index, stage: Stage, v0_ml: float | None) -> list[IndexRow]:
             if run not in chief
         ]
     doubt = _uncertainty(stage, index)
-    rows = [_row(index, beats, doubt, run=None, spoiled=bool(spoiled), why=why)]
+    values = [_value(index, beats, doubt, run=None, spoiled=bool(spoiled), why=why)]
     for run in steady if index.source is Source.STEADY else preload:
         alone = replace(beats, steady=(run,)) if index.source is Source.STEADY else replace(beats, preload=(run,))
-        rows.append(_row(index, alone, doubt, run=run.run, spoiled=bool(spoiled), why=[stage.reasons[check.name] for check in spoiled]))
-    return rows
+        values.append(_value(index, alone, doubt, run=run.run, spoiled=bool(spoiled), why=[stage.reasons[check.name] for check in spoiled]))
+    return values
 
 
 def _uncertainty(stage: Stage, index: Index) -> CalibrationUncertainty:
@@ -105,8 +120,8 @@ def _uncertainty(stage: Stage, index: Index) -> CalibrationUncertainty:
     return reduce(CalibrationUncertainty.joined, found) if found else CalibrationUncertainty()
 
 
-def _row(index: Index, beats: StageBeats, doubt: CalibrationUncertainty, *, run: str | None, spoiled: bool, why: list[str]) -> IndexRow:
-    """Return one row: the estimate, or why there is none."""
+def _value(index: Index, beats: StageBeats, doubt: CalibrationUncertainty, *, run: str | None, spoiled: bool, why: list[str]) -> StageValue:
+    """Return one value: the estimate, or why there is none."""
     estimate: Estimate | None = None
     reason = "; ".join(why) or None
     bearing = [one for one in (beats.steady if index.source is Source.STEADY else beats.preload) if one.chosen.any()]
@@ -119,8 +134,9 @@ def _row(index: Index, beats: StageBeats, doubt: CalibrationUncertainty, *, run:
     if estimate is not None:
         reason = "; ".join([*why, *(f"without {told}" for told in estimate.left_out)]) or None
     status = WITHHELD if estimate is None else PUBLISHED
-    low, high = (None, None) if estimate is None else calibrated_interval(estimate, index.sensitivity(beats, estimate.value), doubt)
-    return {
+    sensitivity = None if estimate is None else index.sensitivity(beats, estimate.value)
+    low, high = (None, None) if estimate is None or sensitivity is None else calibrated_interval(estimate, sensitivity, doubt)
+    row: IndexRow = {
         "run": run,
         "index": index.name,
         "estimator": PRE_ONSET if beats.pre_onset and index.source is Source.STEADY else index.estimator,
@@ -137,6 +153,7 @@ def _row(index: Index, beats: StageBeats, doubt: CalibrationUncertainty, *, run:
         "machine_status": status,
         "reason": reason,
     }
+    return StageValue(row, estimate, sensitivity, doubt)
 
 
 def _bounded(value: float | None) -> float | None:
@@ -150,12 +167,12 @@ def _matters(run: RunVerdict, index: Index) -> bool:
 
 
 def _run_reason(run: RunVerdict, index: Index) -> str:
-    guilty = {check.name for check in run.failed if index.name in check.spoils}
+    guilty = {check.name for check in spoilers(index.exposed, run.failed)}
     told = next((finding.reason for finding in run.findings if finding.check.name in guilty and finding.decisive), "unusable")
     return f"without run {run.subject.facts.run}: {told}"
 
 
-def _steady_runs(stage: Stage, index: str) -> tuple[tuple[RunBeats, ...], bool]:
+def _steady_runs(stage: Stage, index: Index) -> tuple[tuple[RunBeats, ...], bool]:
     """Return the steady runs that may bear an index, or the beats before the onsets where there are none."""
     steady = tuple(_beats(run, run.accepted) for run in stage.of_kind("steady") if _is_sound(run, index))
     if steady:
@@ -168,7 +185,7 @@ def _steady_runs(stage: Stage, index: str) -> tuple[tuple[RunBeats, ...], bool]:
     return tuple(before), bool(before)
 
 
-def _preload_runs(stage: Stage, index: str) -> tuple[RunBeats, ...]:
+def _preload_runs(stage: Stage, index: Index) -> tuple[RunBeats, ...]:
     return tuple(_beats(run, run.accepted & run.subject.in_window) for run in stage.of_kind("preload-reduction") if _is_sound(run, index))
 
 
@@ -181,8 +198,8 @@ def _chief(runs: tuple[RunBeats, ...]) -> tuple[RunBeats, ...]:
     return tuple(run for run in runs if run.manoeuvre == chief)
 
 
-def _is_sound(run: RunVerdict, index: str) -> bool:
-    return run.is_usable and run.subject.beats is not None and not spoilers(index, run.failed)
+def _is_sound(run: RunVerdict, index: Index) -> bool:
+    return run.is_usable and run.subject.beats is not None and not spoilers(index.exposed, run.failed)
 
 
 def _beats(run: RunVerdict, chosen: BoolArray) -> RunBeats:

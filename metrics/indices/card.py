@@ -126,7 +126,8 @@ class Index:
     """One published index: ``compute`` takes the stage's beats and returns an `Estimate` or raises `Withheld`.
 
     ``unit`` is UCUM. ``estimator`` tells kinds apart that must never be mixed, one of them is ``primary``; ``needs`` says in words what
-    it is made of; ``sensitivity`` how errors of the calibration move it.
+    it is made of; ``sensitivity`` how errors of the calibration move it. ``chamber`` is the only one it is defined for; ``rests_on``
+    are indices whose faults reach this estimator too, beside those of its own name.
     """
 
     name: str
@@ -139,3 +140,10 @@ class Index:
     sensitivity: Callable[[StageBeats, float], Sensitivity]
     primary: bool = True
     revision: int = 1
+    chamber: str | None = None
+    rests_on: frozenset[str] = frozenset()
+
+    @property
+    def exposed(self) -> frozenset[str]:
+        """Return the names of the indices whose faults reach this one."""
+        return self.rests_on | {self.name}
