@@ -8,7 +8,7 @@ from __future__ import annotations
 
 from collections import Counter
 from collections.abc import Sequence
-from dataclasses import dataclass, replace
+from dataclasses import dataclass, field, replace
 from functools import reduce
 
 import numpy as np
@@ -36,6 +36,15 @@ class Stage:
     failed: tuple[Check, ...]
     reasons: dict[str, str]
     bsa_m2: float | None = None
+    _chosen: dict[tuple[str, bytes], RunBeats] = field(default_factory=dict, compare=False, repr=False)
+
+    def beats(self, run: RunVerdict, chosen: BoolArray) -> RunBeats:
+        """Return the chosen beats of one of the stage's runs, one and the same for every index that asks for these."""
+        subject = run.subject
+        facts, key = subject.facts, (subject.facts.run, chosen.tobytes())
+        if key not in self._chosen:
+            self._chosen[key] = RunBeats(facts.run, subject.known_signals(), subject.known_beats(), chosen, facts.manoeuvre)
+        return self._chosen[key]
 
     @property
     def chamber(self) -> str:
@@ -174,19 +183,21 @@ def _run_reason(run: RunVerdict, index: Index) -> str:
 
 def _steady_runs(stage: Stage, index: Index) -> tuple[tuple[RunBeats, ...], bool]:
     """Return the steady runs that may bear an index, or the beats before the onsets where there are none."""
-    steady = tuple(_beats(run, run.accepted) for run in stage.of_kind("steady") if _is_sound(run, index))
+    steady = tuple(stage.beats(run, run.accepted) for run in stage.of_kind("steady") if _is_sound(run, index))
     if steady:
         return steady, False
     before = []
     for run in stage.of_kind("preload-reduction"):
         window = run.subject.window
         if _is_sound(run, index) and window is not None:
-            before.append(_beats(run, run.accepted & (np.arange(run.accepted.size) < window.onset_at)))
+            before.append(stage.beats(run, run.accepted & (np.arange(run.accepted.size) < window.onset_at)))
     return tuple(before), bool(before)
 
 
 def _preload_runs(stage: Stage, index: Index) -> tuple[RunBeats, ...]:
-    return tuple(_beats(run, run.accepted & run.subject.in_window) for run in stage.of_kind("preload-reduction") if _is_sound(run, index))
+    return tuple(
+        stage.beats(run, run.accepted & run.subject.in_window) for run in stage.of_kind("preload-reduction") if _is_sound(run, index)
+    )
 
 
 def _chief(runs: tuple[RunBeats, ...]) -> tuple[RunBeats, ...]:
@@ -200,8 +211,3 @@ def _chief(runs: tuple[RunBeats, ...]) -> tuple[RunBeats, ...]:
 
 def _is_sound(run: RunVerdict, index: Index) -> bool:
     return run.is_usable and run.subject.beats is not None and not spoilers(index.exposed, run.failed)
-
-
-def _beats(run: RunVerdict, chosen: BoolArray) -> RunBeats:
-    subject = run.subject
-    return RunBeats(subject.facts.run, subject.known_signals(), subject.known_beats(), chosen, subject.facts.manoeuvre)

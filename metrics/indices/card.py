@@ -3,9 +3,10 @@
 from __future__ import annotations
 
 from collections.abc import Callable
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from enum import StrEnum
 from functools import cached_property
+from typing import TypeVar
 
 import numpy as np
 
@@ -13,6 +14,8 @@ from metrics.arrays import BoolArray, FloatArray
 from metrics.indices.end_systole import EndSystole, EndSystolicLine, end_systole, end_systolic_line
 from metrics.signals.beats import Beats
 from metrics.signals.calibrate import Signals
+
+T = TypeVar("T")
 
 
 class Withheld(Exception):  # noqa: N818  (an outcome with a reason, not a programming error)
@@ -67,6 +70,14 @@ class RunBeats:
     beats: Beats
     chosen: BoolArray
     manoeuvre: str | None = None
+    _known: dict[object, object] = field(default_factory=dict, compare=False, repr=False)
+
+    def once(self, measure: Callable[[RunBeats], T]) -> T:
+        """Return what ``measure`` makes of this run, made once for all indices that share it."""
+        if measure not in self._known:
+            self._known[measure] = measure(self)
+        found: T = self._known[measure]  # type: ignore[assignment]  # what the measure itself returned
+        return found
 
     @cached_property
     def end_systolic_line(self) -> EndSystolicLine:
