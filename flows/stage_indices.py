@@ -82,9 +82,9 @@ class StageValue:
 
 
 def stage_values(stage: Stage) -> list[StageValue]:
-    """Return the stage's values: every index defined for the chamber, pooled over its runs, then each run that bears it."""
+    """Return the stage's values: every index defined for it, pooled over its runs, then each run that bears it."""
     v0_ml = stage_v0_ml(stage)
-    return [value for index in ALL if index.chamber in (None, stage.chamber) for value in _values_of(index, stage, v0_ml)]
+    return [value for index in ALL if _is_defined(index, stage) for value in _values_of(index, stage, v0_ml)]
 
 
 def index_rows(stage: Stage) -> list[IndexRow]:
@@ -98,6 +98,11 @@ def stage_v0_ml(stage: Stage) -> float | None:
         return VOLUME_INTERCEPT.compute(StageBeats(preload=_chief(_preload_runs(stage, END_SYSTOLIC_ELASTANCE)))).value
     except Withheld:
         return None
+
+
+def _is_defined(index: Index, stage: Stage) -> bool:
+    """Return whether the index means anything in this chamber, and the acquisition declares what it is divided by."""
+    return index.chamber in (None, stage.chamber) and (stage.bsa_m2 is not None or not index.by_body_surface)
 
 
 def _values_of(index: Index, stage: Stage, v0_ml: float | None) -> list[StageValue]:
@@ -141,14 +146,14 @@ def _value(index: Index, beats: StageBeats, doubt: CalibrationUncertainty, *, ru
     if estimate is not None and not np.isfinite(estimate.value):
         estimate, reason = None, reason or "the estimate is not a finite number"
     if estimate is not None:
-        reason = "; ".join([*why, *(f"without {told}" for told in estimate.left_out)]) or None
+        reason = "; ".join([*why, *(f"without {told}" for told in estimate.left_out), *estimate.notes]) or None
     status = WITHHELD if estimate is None else PUBLISHED
     sensitivity = None if estimate is None else index.sensitivity(beats, estimate.value)
     low, high = (None, None) if estimate is None or sensitivity is None else calibrated_interval(estimate, sensitivity, doubt)
     row: IndexRow = {
         "run": run,
         "index": index.name,
-        "estimator": PRE_ONSET if beats.pre_onset and index.source is Source.STEADY else index.estimator,
+        "estimator": _estimator(index, pre_onset=beats.pre_onset),
         "primary": run is None and index.primary,
         "value": None if estimate is None else estimate.value,
         "unit": index.unit,
@@ -163,6 +168,13 @@ def _value(index: Index, beats: StageBeats, doubt: CalibrationUncertainty, *, ru
         "reason": reason,
     }
     return StageValue(row, estimate, sensitivity, doubt)
+
+
+def _estimator(index: Index, *, pre_onset: bool) -> str:
+    """Return the estimator's name; an index's primary one is known as pre-onset where its beats are those, the others keep their own."""
+    if not pre_onset or index.source is not Source.STEADY:
+        return index.estimator
+    return PRE_ONSET if index.primary else f"{PRE_ONSET}:{index.estimator}"
 
 
 def _bounded(value: float | None) -> float | None:

@@ -34,7 +34,8 @@ class Source(StrEnum):
 class Estimate:
     """A finite value with the 95 % interval of its fit (None where the sample is too small for one), and the beats it came from.
 
-    ``runs`` is how many runs bear it where that is fewer than were offered; ``left_out`` says of each of the others why.
+    ``runs`` is how many runs bear it where that is fewer than were offered; ``left_out`` says of each of the others why. ``notes`` are
+    sentences a reader of the published value must see.
     """
 
     value: float
@@ -43,6 +44,7 @@ class Estimate:
     beats: int
     runs: int | None = None
     left_out: tuple[str, ...] = ()
+    notes: tuple[str, ...] = ()
 
 
 @dataclass(frozen=True, slots=True)
@@ -138,7 +140,8 @@ class Index:
 
     ``unit`` is UCUM. ``estimator`` tells kinds apart that must never be mixed, one of them is ``primary``; ``needs`` says in words what
     it is made of; ``sensitivity`` how errors of the calibration move it. ``chamber`` is the only one it is defined for; ``rests_on``
-    are indices whose faults reach this estimator too, beside those of its own name.
+    are indices whose faults reach this estimator too, beside those of its own name. One ``by_body_surface`` is published only where a
+    body surface area is declared.
     """
 
     name: str
@@ -153,6 +156,7 @@ class Index:
     revision: int = 1
     chamber: str | None = None
     rests_on: frozenset[str] = frozenset()
+    by_body_surface: bool = False
 
     @property
     def exposed(self) -> frozenset[str]:
