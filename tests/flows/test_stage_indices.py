@@ -11,14 +11,14 @@ from checks import ALL
 from checks.check import Judged, Level, Verdict
 from checks.spoils import EVERYTHING
 from flows.sources.simulated.rhythm import Conditions, Occlusion
-from flows.stage_indices import Stage, index_rows, stage_v0_ml, stages_of
+from flows.stage_indices import PRE_ONSET, Stage, index_rows, stage_v0_ml, stages_of
 from metrics.indices import ALL as INDICES
 from metrics.indices.card import Source
 from tests.checks.made_subjects import CHECKS, declared, judged_run, simulated
 
 KNOWN = frozenset(index.name for index in INDICES)
 BY_NAME = {index.name: index for index in INDICES if index.primary}
-STEADY = frozenset(index.name for index in INDICES if index.source is Source.STEADY)
+STEADY = frozenset(index.name for index in INDICES if index.primary and index.source is Source.STEADY)
 REST = Conditions(duration_s=10.0)
 RAMP = Conditions(duration_s=14.0, occlusion=Occlusion(onset_s=4.0))
 
@@ -43,6 +43,13 @@ def failing(verdict, check):
 
 
 def rows(*runs, failed=(), bsa_m2=None):
+    """Every row of the primary estimators."""
+    chief = {(index.name, index.estimator) for index in INDICES if index.primary}
+    found = every_row(*runs, failed=failed, bsa_m2=bsa_m2)
+    return [row for row in found if (row["index"], row["estimator"]) in chief or row["estimator"] == PRE_ONSET]
+
+
+def every_row(*runs, failed=(), bsa_m2=None):
     reasons = {check.name: f"{check.name} failed" for check in failed}
     (stage,) = stages_of(runs, tuple(failed), reasons, bsa_m2)
     return index_rows(stage)
@@ -109,6 +116,35 @@ def test_of_two_runs_the_spoiled_one_alone_drops_out_and_only_of_what_it_spoils(
             assert not {"rest-2", "ramp-2"} & {other["run"] for other in found if other["index"] == name}
         else:
             assert row["reason"] is None
+
+
+def of_estimator(found, name, estimator):
+    return [row for row in found if (row["index"], row["estimator"]) == (name, estimator)]
+
+
+def test_every_estimator_of_the_chamber_stands_beside_the_primary_one_and_none_of_the_other_chamber():
+    found = every_row(run("rest"), ramp())
+    here = {(index.name, index.estimator) for index in INDICES if index.chamber != "RV"}
+    assert {(row["index"], row["estimator"]) for row in found} == here
+    for index in INDICES:
+        if index.chamber != "RV" and not index.primary:
+            whole, *alone = of_estimator(found, index.name, index.estimator)
+            assert (whole["run"], whole["primary"]) == (None, False)
+            assert {row["run"] for row in alone} <= {"rest", "ramp"}
+
+
+def test_an_estimator_is_withheld_by_what_reaches_that_which_it_rests_on():
+    found = every_row(run("rest"), ramp(), failed=(CHECKS["pressure-sensor"],))
+    assert "Ees" not in CHECKS["pressure-sensor"].spoils
+    assert [row["status"] for row in of_estimator(found, "Ees", BY_NAME["Ees"].estimator)] == ["published"] * 2
+    assert [row["status"] for row in of_estimator(found, "Ees", "single-beat:takeuchi")] == ["withheld"] * 2
+
+
+def test_an_estimator_beside_the_primary_keeps_its_name_before_the_onset():
+    found = every_row(ramp())
+    assert len(of_estimator(found, "Ees", "pre-onset:single-beat:takeuchi")) == 2
+    counted = Counter((row["index"], row["estimator"], row["run"]) for row in found)
+    assert set(counted.values()) == {1}
 
 
 def test_pooled_steady_beats_are_counted_together():
@@ -207,7 +243,9 @@ def test_a_stage_knows_its_runs_by_kind():
 
 
 def test_an_index_never_holds_a_value_beside_withheld_nor_infinity():
-    every = rows(run("rest"), ramp(), ramp("ramp-2", 3)) + rows(run("rest")) + rows(ramp(), failed=(CHECKS["pressure-zero"],))
+    every = (
+        every_row(run("rest"), ramp(), ramp("ramp-2", 3)) + every_row(run("rest")) + every_row(ramp(), failed=(CHECKS["pressure-zero"],))
+    )
     for row in every:
         assert (row["value"] is None) is (row["status"] == "withheld")
         assert row["machine_status"] == row["status"]
