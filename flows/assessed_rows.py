@@ -10,6 +10,7 @@ from checks.check import Judged, Level
 from checks.verdicts import ACCEPTED, QUERIED, REJECTED, UNUSABLE, USABLE, Finding, RunVerdict
 from flows.study.manifest import Manifest
 from metrics.indices.end_systole import end_systole
+from metrics.signals.falls import tau_ms
 
 Row = dict[str, object]
 
@@ -96,6 +97,7 @@ def beat_rows(run: RunVerdict, manifest: Manifest, v0_ml: float | None) -> list[
     points = end_systole(subject.signals, beats, v0_ml)
     values = {name: getattr(beats, name) for name in BEAT_COLUMNS if hasattr(beats, name)}
     values |= {"esp_mmhg": points.esp_mmhg, "ea_mmhg_per_ml": points.esp_mmhg / np.where(beats.sv_ml > 0.0, beats.sv_ml, np.nan)}
+    values["tau_ms"] = tau_ms(subject.signals, beats)
     nothing = np.full(len(beats), np.nan)
     columns = {name: _numbers(values.get(name, nothing)) for name in BEAT_COLUMNS}
     starts, ends = _numbers(beats.start / rate_hz), _numbers(beats.end / rate_hz)

@@ -3,6 +3,7 @@
 A gain or an offset is put on the recorded channel; the recording then goes the program's whole way, verdicts and all.
 """
 
+import math
 from dataclasses import replace
 from functools import cache
 
@@ -24,6 +25,10 @@ ITERATED = dict.fromkeys(("ESP", "Ea", "Ees", "V0", "Ees_Ea"), 1e-3)
 """V0 is iterated to 0.01 mL, so now and then an end-systole may move to its neighbour; V0's as a fraction of EDV."""
 RELAXED = dict.fromkeys(("ESV", "SV", "EF", "Ea", "Ees_Ea"), 2e-3)
 """A right ventricle's smallest volume is looked for until pressure is within 5 mmHg of EDP: in noise a gain may move that by a sample."""
+WINDOWED = dict.fromkeys(("tau", "Pinf"), 0.06)
+"""A fall ends 5 mmHg above the next EDP, whatever the gain, and these hearts' falls are not quite exponential; Pinf's of peak pressure."""
+BY_RANGE = frozenset({"tau", "Pinf", "EDPVR_beta", "EDPVR_stiffness", "V20", "V30"})
+"""Withheld where the pressure they are about was not seen: a gain or an offset may bring it in or out of sight."""
 MEDIANS = 3e-3
 """A median of ratios is not the ratio of medians, which is what the prediction for an offset is made of."""
 
@@ -45,28 +50,43 @@ def assessed(heart, catheter, channel=None, gain=1.0, offset=0.0):
 
 def volume_gain(was, g):
     scaled = {"EDV": g, "ESV": g, "SV": g, "SW": g, "V0": g, "Ea": 1.0 / g, "Ees": 1.0 / g}
-    return {name: value * scaled.get(name, 1.0) for name, value in was.items()}
+    scaled |= {"EDPVR_beta": 1.0 / g, "EDPVR_stiffness": 1.0 / g, "V20": g, "V30": g}
+    return {name: value and value * scaled.get(name, 1.0) for name, value in was.items()}
 
 
 def volume_offset(was, o):
-    moved = {name: was[name] + o for name in ("EDV", "ESV", "V0")}
+    moved = {name: was[name] and was[name] + o for name in ("EDV", "ESV", "V0", "V20", "V30")}
     return was | moved | {"EF": was["EF"] * was["EDV"] / (was["EDV"] + o)}
 
 
 def pressure_gain(was, g):
-    scaled = ("EDP", "ESP", "Pmax", "Ea", "SW", "dPdt_max", "dPdt_min", "Ees", "PRSW")
-    return {name: value * (g if name in scaled else 1.0) for name, value in was.items()}
+    scaled = ("EDP", "ESP", "Pmax", "Ea", "SW", "dPdt_max", "dPdt_min", "Ees", "PRSW", "Pinf")
+    return {name: value and value * (g if name in scaled else 1.0) for name, value in was.items()} | passive_curve(was, g, 0.0)
 
 
 def pressure_offset(was, e):
-    moved = {name: was[name] + e for name in ("EDP", "ESP", "Pmax")}
+    moved = {name: was[name] and was[name] + e for name in ("EDP", "ESP", "Pmax", "Pinf")} | passive_curve(was, 1.0, e)
     ea = was["Ea"] + e / was["SV"]
     return was | moved | {"Ea": ea, "V0": was["V0"] - e / was["Ees"], "Ees_Ea": was["Ees"] / ea}
 
 
+def passive_curve(was, g, e):
+    """What is read at a pressure is read where the pressure was (p - e) / g, on P = c + exp(beta V) ...; the slope grows by g."""
+    beta, stiffness = was["EDPVR_beta"], was["EDPVR_stiffness"]
+    if beta is None or stiffness is None:
+        return dict.fromkeys(("EDPVR_stiffness", "V20", "V30"))
+    floor = 10.0 - stiffness / beta
+    moved = {"EDPVR_stiffness": g * beta * ((10.0 - e) / g - floor)}
+    for name, pressure in (("V20", 20.0), ("V30", 30.0)):
+        moved[name] = was[name] and was[name] + math.log(((pressure - e) / g - floor) / (pressure - floor)) / beta
+    return moved
+
+
 def compare(found, predicted, tolerances):
-    scales = {"V0": found["EDV"], "EDP": found["Pmax"]}
+    scales = {"V0": found["EDV"], "EDP": found["Pmax"], "Pinf": found["Pmax"]}
     for name in NAMES:
+        if name in BY_RANGE and None in {found[name], predicted[name]}:
+            continue
         allowed = tolerances.get(name, EXACT) * abs(scales.get(name, predicted[name]))
         assert found[name] == pytest.approx(predicted[name], rel=0.0, abs=allowed), name
 
@@ -100,7 +120,7 @@ def test_volume_offset(case, offset):
 @FEW
 @given(gain=GAIN)
 def test_pressure_gain(case, gain):
-    check(case, "pressure", gain, 0.0, pressure_gain, ITERATED | (RELAXED if case[0].startswith("right") else {}))
+    check(case, "pressure", gain, 0.0, pressure_gain, ITERATED | WINDOWED | (RELAXED if case[0].startswith("right") else {}))
 
 
 @pytest.mark.parametrize("case", CASES, ids="-".join)
@@ -112,4 +132,4 @@ def test_pressure_offset(case, offset):
 
 def test_every_index_has_a_prediction():
     was, _ = assessed(*CASES[0])
-    assert all(value is not None for value in was.values())
+    assert {name for name, value in was.items() if value is None} == {"V20", "V30"}

@@ -25,6 +25,12 @@ PUBLISHED = {
     "V0": "mL",
     "Ees_Ea": "1",
     "PRSW": "mm[Hg]",
+    "tau": "ms",
+    "Pinf": "mm[Hg]",
+    "EDPVR_beta": "/mL",
+    "EDPVR_stiffness": "mm[Hg]/mL",
+    "V20": "mL",
+    "V30": "mL",
 }
 
 
