@@ -1,12 +1,16 @@
 """End-systolic elastance and its volume-axis intercept: ESP = Ees * (V - V0).
 
 Suga and Sagawa 1974, Circ Res 35:117 (from memory), end-systole iterated with V0 (Kono 1984), a line with noise in both axes. A
-negative V0 follows from a curved relation (Kass 1989, Circulation 79:167, read in abstract) and is never a reason to withhold.
+negative V0 follows from a curved relation (Kass 1989, Circulation 79:167, read in abstract) and is never a reason to withhold; where
+the points do bend, V0's reason says so.
 """
 
 from __future__ import annotations
 
+from dataclasses import replace
+
 from metrics.indices.card import Estimate, Index, RunBeats, Sensitivity, Source, StageBeats, powers
+from metrics.indices.end_systolic_curve import curvature_note
 from metrics.indices.slopes import intercept_estimate, pooled_lines, slope_estimate
 from metrics.stats.lines import Line
 
@@ -26,7 +30,7 @@ def end_systolic_elastance(stage: StageBeats) -> Estimate:
 
 def volume_intercept(stage: StageBeats) -> Estimate:
     """Return V0, mL; raises `Withheld` when no run carries a line."""
-    return intercept_estimate(pooled_lines(stage, end_systolic_line_of))
+    return replace(intercept_estimate(pooled_lines(stage, end_systolic_line_of)), notes=curvature_note(stage))
 
 
 def _intercept_sensitivity(stage: StageBeats, value: float) -> Sensitivity:
