@@ -19,7 +19,8 @@ from flows.errors import InputError
 from flows.evidence import evidence_of
 from flows.facts import acquisition_facts, run_facts
 from flows.sources.read import read_run
-from flows.stage_indices import index_rows, stage_v0_ml, stages_of
+from flows.stage_changes import ValuedStage, change_rows
+from flows.stage_indices import stage_v0_ml, stage_values, stages_of
 from flows.study.manifest import MANIFEST_NAME, Manifest, ManifestRun
 from flows.study.protocol import Protocol
 
@@ -69,7 +70,10 @@ def assess(files: Mapping[str, Path], manifest: Manifest, protocol: Protocol) ->
     reasons = {finding.check.name: finding.reason for finding in findings}
     stages = stages_of(runs, failed, reasons, facts.bsa_m2)
     key: Row = {"site": manifest.site, "subject": manifest.subject, "visit": manifest.visit, "acquisition": manifest.acquisition}
-    indices: list[Row] = [{**key, "chamber": manifest.chamber, "stage": stage.name, **row} for stage in stages for row in index_rows(stage)]
+    valued = [ValuedStage(stage, stage_values(stage)) for stage in stages]
+    indices: list[Row] = [
+        {**key, "chamber": manifest.chamber, "stage": one.stage.name, **value.row} for one in valued for value in one.values
+    ]
     v0_by_stage = {stage.name: stage_v0_ml(stage) for stage in stages}
     beats = [row for run in runs for row in beat_rows(run, manifest, v0_by_stage.get(run.subject.facts.stage))]
     rejections = rejection_rows(findings, runs, manifest)
@@ -81,6 +85,7 @@ def assess(files: Mapping[str, Path], manifest: Manifest, protocol: Protocol) ->
         beats=beats,
         rejections=rejections,
         indices=indices,
+        changes=[{**key, **row} for row in change_rows(valued, facts.reference_stage)],
         measures=measure_rows(judged, runs, manifest),
         evidence=evidence_of(manifest, runs, findings, run_rows, beats, indices),
         channels=channel_rows(subjects, manifest.site, manifest.acquisition),

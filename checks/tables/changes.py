@@ -9,17 +9,23 @@ from checks.tables.kinds import quantity, text
 
 
 class Changes(pa.DataFrameModel):
-    """An index between two stages: a difference with its interval, or nothing with a reason."""
+    """An index between two stages: a difference with its interval, or nothing with a reason.
+
+    The rows of one index whose part is not `total` sum to the one whose part is.
+    """
 
     site: str = text("the site")
     subject: str = text("the subject's pseudonym")
     visit: str = text("the visit")
     acquisition: str = text("the acquisition")
-    from_stage: str = text("the stage of reference")
+    from_stage: str = text("the stage of reference, from which the difference is counted")
     to_stage: str = text("the stage compared with it")
     index: str = text("name of the index")
     estimator: str = text("how it was estimated, the same in both stages")
-    part: str = text("which part of the difference the row holds, where it is split; null for the whole", optional=True)
+    part: str = text(
+        "what of the difference the row holds: total, or the share of Ees, V0 (together: contractility), Ea or EDV by the box model, "
+        "or model-residual, what the box leaves of it; the shares and the residual sum to the total"
+    )
     difference: float = quantity("value at to_stage minus value at from_stage; null where withheld", None)
     unit: str = text("UCUM unit of difference and interval", optional=True)
     ci_low: float = quantity("lower end of the 95 % interval", None)
