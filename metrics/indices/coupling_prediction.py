@@ -2,7 +2,8 @@
 
 Sunagawa 1985, Circ Res 56:586 (read): ``SV = Ees (EDV - V0) / (Ees + Ea)``, ``ESP = Ea SV``: where the end-systolic line and the arterial
 one cross. Estimators of SV and ESP that are never primary. Ea is the measured one, so a prediction far from the measurement says that the
-steady beats do not lie on the occlusion's line: contractility or the calibration changed between the runs.
+steady beats do not lie on the occlusion's line: contractility or the calibration changed between the runs. Both come out 1 to 3 % low in
+sound hearts, which go on ejecting a little after end-systole (computed on simulated hearts).
 
 The interval is of first order (derived). The crossing moves with the line's volume at that very pressure, by the share Ees / (Ees + Ea) of
 it: slope and V0, whose errors belong together, need not be joined.

@@ -10,9 +10,10 @@ EDVS_ML = np.linspace(150.0, 110.0, 9)
 STEADY = boxes([130.0] * 7, run="rest")
 """The worked rectangle: Ees 2.5, V0 10, Ea 2, EDV 130."""
 RAMP = boxes(EDVS_ML)
-STAGE = StageBeats(steady=(STEADY,), preload=(RAMP,), v0_ml=10.0)
+STAGE = StageBeats(steady=(STEADY,), preload=(RAMP,), v0_ml=10.0, bsa_m2=2.0)
 
-# by hand: SV = 2.5 x 120 / 4.5, ESP = 2 SV, SW = ESP x SV; the loop crosses the end-systolic line at its upper left corner
+# by hand: SV = 2.5 x 120 / 4.5, ESP = 2 SV, SW = ESP x SV; the loop crosses the end-systolic line at its upper left corner.
+# The cubic through five samples 0.04 s apart sees SV lost in one step as 8/12 SV / 0.04 s of flow; dP/dtmax is 10 ESP
 WORKED = {
     "HR": 60.0 / (4.0 / 25.0),
     "EDV": 130.0,
@@ -29,10 +30,24 @@ WORKED = {
     "Ees": 2.5,
     "V0": 10.0,
     "Ees_Ea": 1.25,
+    "CO": 25.0,
+    "EDVI": 65.0,
+    "ESVI": 31.6666667,
+    "SVI": 33.3333333,
+    "CI": 12.5,
+    "EaI": 4.0,
+    "V100": 50.0,
+    "V120": 58.0,
+    "PE": 3555.555556,
+    "PVA": 12444.44444,
+    "efficiency": 0.714285714,
+    "PWRmax": 400.0 / 3.0 * 10000.0 / 9.0 * 1.33322e-4,
+    "PWRmax_EDV2": 400.0 / 3.0 * 10000.0 / 9.0 * 0.133322 / 16900.0,
+    "dPdt_max_EDV": 11.11111111,
 }
 
 CURVES = frozenset({"EDPVR_beta", "EDPVR_stiffness", "V20", "V30"})
-ELSEWHERE = CURVES | {"PRSW", "tau", "Pinf"}
+ELSEWHERE = CURVES | {"PRSW", "Vw", "tau", "Pinf"}
 """What a rectangle does not have: worked further down, or in a file of its own."""
 
 
@@ -59,6 +74,7 @@ def test_recruitable_work_of_the_worked_line():
     assert estimate.value == pytest.approx(70.0)
     assert (estimate.fit_low, estimate.fit_high) == pytest.approx((70.0, 70.0))
     assert estimate.beats == 5
+    assert BY_NAME["Vw"].compute(StageBeats(preload=(run,))).value == pytest.approx(30.0)
 
 
 def test_steady_indices_are_medians_of_beats_not_ratios_of_medians():
@@ -141,7 +157,7 @@ def test_slopes_need_five_beats(name):
 
 @pytest.mark.parametrize("name", LINES)
 def test_five_beats_bear_a_line(name):
-    assert BY_NAME[name].compute(StageBeats(steady=(STEADY,), preload=(boxes(EDVS_ML[:5]),), v0_ml=10.0)).value > 0.0
+    assert BY_NAME[name].compute(StageBeats(steady=(STEADY,), preload=(boxes(EDVS_ML[:5] - 30.0),), v0_ml=10.0)).value > 0.0
 
 
 @pytest.mark.parametrize("name", SLOPES)
@@ -154,6 +170,7 @@ def scattered_run(rise):
     run = boxes(np.linspace(120.0, 116.0, 8))
     run.signals.pressure_mmhg[:-1] = np.repeat(np.where(np.arange(8) % 2, 90.0, 120.0) + rise * np.arange(8), 4)
     run.beats.sw_mmhg_ml[:] = np.where(np.arange(8) % 2, 6000.0, 9000.0) + 50.0 * rise * np.arange(8)
+    run.beats.dpdt_max_mmhg_per_s[:] = np.where(np.arange(8) % 2, 900.0, 1200.0) + 10.0 * rise * np.arange(8)
     return run
 
 
@@ -167,6 +184,7 @@ def test_a_slope_that_falls_is_withheld(name):
     rising = boxes(np.linspace(130.0, 100.0, 8))
     rising.signals.pressure_mmhg[:] = rising.signals.pressure_mmhg[::-1].copy()
     rising.beats.sw_mmhg_ml[:] = rising.beats.sw_mmhg_ml[::-1].copy()
+    rising.beats.dpdt_max_mmhg_per_s[:] = rising.beats.dpdt_max_mmhg_per_s[::-1].copy()
     rising.signals.pressure_mmhg[:] = np.roll(rising.signals.pressure_mmhg, -1)
     assert "not positive" in refused(name, rising)
 
