@@ -20,8 +20,8 @@ from metrics.indices.card import Estimate, Index, RunBeats, Sensitivity, Source,
 from metrics.indices.diastolic_curve import PassiveCurve, Reading, end_diastolic_points, exponential_curve, power_curve, reading
 
 STIFFNESS_AT_MMHG = 10.0
-BEYOND_SHARE = 0.25
-"""A pressure may lie beyond the points by this share of their range; house default."""
+BEYOND_SHARE = 0.5
+"""A pressure may lie beyond the points by this share of their range, which is about a quarter of the volumes' range; house default."""
 
 CurveOf = Callable[[RunBeats], PassiveCurve]
 ReadingOf = Callable[[RunBeats], Reading]

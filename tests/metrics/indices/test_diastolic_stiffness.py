@@ -167,10 +167,10 @@ def test_a_pressure_that_was_never_near_is_not_spoken_of(card):
     assert f"from {low.min():.1f} to {low.max():.1f} mmHg say nothing of" in refused(card, low)
 
 
-@pytest.mark.parametrize(("highest_mmhg", "is_told"), [(18.1, True), (17.9, False)])
-def test_a_pressure_a_quarter_of_the_range_beyond_is_the_last_one(highest_mmhg, is_told):
-    # 10 to 18 mmHg reach to 20
-    pressure = 10.0 + (highest_mmhg - 10.0) * np.expm1(0.03 * (VOLUMES_ML - 90.0)) / np.expm1(1.8)
+@pytest.mark.parametrize(("highest_mmhg", "is_told"), [(15.1, True), (14.9, False)])
+def test_a_pressure_half_of_the_range_beyond_is_the_last_one(highest_mmhg, is_told):
+    # 5 to 15 mmHg reach to 20
+    pressure = 5.0 + (highest_mmhg - 5.0) * np.expm1(0.03 * (VOLUMES_ML - 90.0)) / np.expm1(1.8)
     if is_told:
         assert VOLUME_AT_20.compute(stage(pressure)).value > VOLUMES_ML.max()
     else:
