@@ -60,6 +60,30 @@ def boxes(edvs_ml, *, ees=2.5, v0_ml=10.0, ea=2.0, edp_mmhg=0.0, run="ramp", **n
     return RunBeats(run, made_signals(pressure, volume, **noises), beats, np.ones(edv.size, dtype=bool), "caval-balloon")
 
 
+def cosine_run(count=6, *, amplitude=200.0, edp=10.0, period_s=0.4, esp=110.0, edv=120.0, sv=70.0, rate_hz=250.0):
+    """Beats whose isovolumic parts are one exact cosine, cut off at ``esp`` while the ventricle ejects."""
+    contraction, rising, falling = (round(share * period_s * rate_hz) for share in (1.0, 0.15, 0.825))
+    length = 2 * contraction
+    pressure, volume = np.full(length, edp), np.full(length, edv)
+    pressure[: contraction + 1] = edp + 0.5 * amplitude * (1.0 - np.cos(2.0 * np.pi * np.arange(contraction + 1) / rate_hz / period_s))
+    pressure[rising + 1 : falling] = esp
+    volume[falling : contraction + 20] = edv - sv
+    volume[rising + 1 : falling] = np.linspace(edv, edv - sv, falling - rising - 1)
+    start = length * np.arange(count)
+    columns = {"edv_ml": edv, "esv_ml": edv - sv, "edp_mmhg": edp, "pmax_mmhg": esp, "sw_mmhg_ml": esp * sv}
+    beats = made_beats(
+        count,
+        rr_s=length / rate_hz,
+        rate_hz=rate_hz,
+        dpdt_max_at=start + rising,
+        dpdt_min_at=start + falling,
+        esv_at=start + falling,
+        **{name: np.full(count, value) for name, value in columns.items()},
+    )
+    signals = made_signals(np.append(np.tile(pressure, count), edp), np.append(np.tile(volume, count), edv), rate_hz=rate_hz)
+    return RunBeats("rest", signals, beats, np.ones(count, dtype=bool))
+
+
 def measured_run(run="ramp", manoeuvre="caval-balloon", **columns):
     """A run known by its beats' columns alone, as many beats as the columns are long."""
     count = len(next(iter(columns.values())))

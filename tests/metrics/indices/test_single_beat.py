@@ -7,45 +7,13 @@ from metrics.indices import ALL, single_beat
 from metrics.indices.card import RunBeats, Source, StageBeats, Withheld
 from metrics.indices.single_beat import source_pressure, source_rise
 from metrics.signals.beats import Beats
-from tests.metrics.made_beats import made_signals
+from tests.metrics.made_beats import cosine_run, made_signals
 from tests.metrics.recorded_hearts import heart_runs, signals_and_beats
 
-CARDS = {
-    chamber: [index for index in ALL if index.chamber == chamber and index.estimator.startswith("single-beat:")] for chamber in ("LV", "RV")
-}
+NAMES = {"LV": "single-beat:takeuchi", "RV": "single-beat:brimioulle"}
+CARDS = {chamber: [index for index in ALL if index.estimator == name] for chamber, name in NAMES.items()}
 RATE_HZ = 250.0
 SAMPLES = 200
-
-
-def cosine_run(count=6, *, amplitude=200.0, edp=10.0, period_s=0.4, esp=110.0, edv=120.0, sv=70.0, rate_hz=RATE_HZ):
-    """Beats whose isovolumic parts are one exact cosine, cut off at ``esp`` while the ventricle ejects."""
-    length, contraction = round(0.8 * rate_hz), round(period_s * rate_hz)
-    time_s = np.arange(contraction + 1) / rate_hz
-    whole = edp + 0.5 * amplitude * (1.0 - np.cos(2.0 * np.pi * time_s / period_s))
-    rising, falling = round(0.06 * rate_hz), round(0.33 * rate_hz)
-    pressure, volume = np.full(length, edp), np.full(length, edv)
-    pressure[: contraction + 1] = whole
-    pressure[rising + 1 : falling] = esp
-    volume[falling : contraction + 20] = edv - sv
-    volume[rising + 1 : falling] = np.linspace(edv, edv - sv, falling - rising - 1)
-    start = length * np.arange(count)
-    constant = {"rr_s": 0.8, "edv_ml": edv, "esv_ml": edv - sv, "edp_mmhg": edp, "pmax_mmhg": esp, "sw_mmhg_ml": esp * sv}
-    columns = {name: np.full(count, value) for name, value in constant.items()}
-    steep = np.full(count, 1000.0)
-    beats = Beats(
-        detector="pressure",
-        start=start,
-        end=start + length,
-        dpdt_max_at=start + rising,
-        dpdt_min_at=start + falling,
-        esv_at=start + falling,
-        r_at=start,
-        dpdt_max_mmhg_per_s=steep,
-        dpdt_min_mmhg_per_s=-steep,
-        **columns,
-    )
-    signals = made_signals(np.append(np.tile(pressure, count), edp), np.append(np.tile(volume, count), edv), rate_hz=rate_hz)
-    return RunBeats("rest", signals, beats, np.ones(count, dtype=bool))
 
 
 def of(run, chamber="LV", v0_ml=None):
@@ -127,8 +95,7 @@ def test_no_beats_at_all_make_no_fit():
 
 @pytest.mark.parametrize("chamber", ["LV", "RV"])
 def test_each_chamber_has_its_own_three_never_primary(chamber):
-    name = {"LV": "single-beat:takeuchi", "RV": "single-beat:brimioulle"}[chamber]
-    assert {(index.name, index.estimator) for index in CARDS[chamber]} == {("Ees", name), ("V0", name), ("Ees_Ea", name)}
+    assert {(index.name, index.chamber) for index in CARDS[chamber]} == {("Ees", chamber), ("V0", chamber), ("Ees_Ea", chamber)}
     assert not any(index.primary for index in CARDS[chamber])
     assert all("tau" in index.exposed and index.name in index.exposed and index.source is Source.STEADY for index in CARDS[chamber])
 
