@@ -90,7 +90,7 @@ def count_status(rows: Iterable[Row], status: str) -> int:
 
 
 def change_lines(rows: Iterable[Row]) -> tuple[ChangeLine, ...]:
-    """Return the changes between stages; a withheld one shows its reason in place of a difference."""
+    """Return the changes between stages; a withheld one shows its reason in place of a difference, a published one what to know of it."""
     return tuple(
         ChangeLine(
             stages=f"{row.get('from_stage')} to {row.get('to_stage')}",
@@ -98,7 +98,7 @@ def change_lines(rows: Iterable[Row]) -> tuple[ChangeLine, ...]:
             part=str(row.get("part") or ""),
             difference=quantity(row.get("difference"), row.get("unit")) if row.get("status") == "published" else "withheld",
             interval=_interval(row) if row.get("status") == "published" else "",
-            reason="" if row.get("status") == "published" else sentence(row.get("reason")),
+            reason=sentence(row.get("reason")),
         )
         for row in rows
     )

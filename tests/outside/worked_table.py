@@ -28,8 +28,9 @@ def worked_table():
     lines = ["| " + " | ".join(cell.replace("|", "\\|") for cell in row) + " |" for row in (HEAD, *rows)]
     lines.insert(1, "|" + "---|" * len(HEAD))
     told = (
-        f"{len(rows)} values, to six digits: what the program makes of each, what it should be, and how near it must come. The last two "
-        "columns say how method and value came here: `read` in the source named, from `memory` of it, or `computed` apart from this program."
+        f"{len(rows)} values, to six digits: what the program makes of each, what it should be, and how near it must come. The last "
+        "two columns say how method and value came here: `read` in the source named, from `memory` of it, or `computed` apart from "
+        "this program."
     )
     also = (
         "Further outside authorities stand in the other files of this folder: certified data sets, reference libraries for lines, curves "
