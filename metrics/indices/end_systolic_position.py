@@ -5,9 +5,9 @@ neither slope nor V0 tells alone. Its interval is Fieller's of the line at that 
 cancel there, are never joined as if they were independent. Published only where the pressure lies among the end-systolic pressures or
 within half their span of them (house default).
 
-For a left ventricle. A right one hardly reaches 100 mmHg; the volumes at 20 and 30 mmHg that bear the names V20 and V30 are those of
-the passive curve (Burkhoff 2005, Am J Physiol 289:H501, from memory), and an end-systolic volume under the same name would be taken for
-another heart's filling. So a right ventricle's end-systolic line is told by Ees and V0 alone.
+V100 and V120 are a left ventricle's. A right one hardly reaches 100 mmHg and is read at 20 and 30; but V20 and V30 are, first of all,
+volumes of the passive curve (Burkhoff 2005, Am J Physiol 289:H501, from memory), another quantity altogether. So the end-systolic ones
+stand under those names as an estimator that is never primary and says what it is.
 """
 
 from __future__ import annotations
@@ -62,25 +62,25 @@ def _sensitivity(pressure_mmhg: float) -> Callable[[StageBeats, float], Sensitiv
     return moved
 
 
-VOLUME_AT_100 = Index(
-    name="V100",
-    title="End-systolic volume at 100 mmHg",
-    unit="mL",
-    estimator=ESTIMATOR,
-    source=Source.PRELOAD,
-    compute=position(100.0),
-    needs=f"{NEEDS}; end-systolic pressures that come near 100 mmHg",
-    sensitivity=_sensitivity(100.0),
-    chamber="LV",
-)
-VOLUME_AT_120 = Index(
-    name="V120",
-    title="End-systolic volume at 120 mmHg",
-    unit="mL",
-    estimator=ESTIMATOR,
-    source=Source.PRELOAD,
-    compute=position(120.0),
-    needs=f"{NEEDS}; end-systolic pressures that come near 120 mmHg",
-    sensitivity=_sensitivity(120.0),
-    chamber="LV",
-)
+def _card(pressure_mmhg: float, chamber: str) -> Index:
+    """Return the card of the volume at a pressure: an index of its own in a left ventricle, beside the passive curve's in a right one."""
+    is_left = chamber == "LV"
+    return Index(
+        name=f"V{pressure_mmhg:.0f}",
+        title=f"End-systolic volume at {pressure_mmhg:.0f} mmHg",
+        unit="mL",
+        estimator=ESTIMATOR if is_left else f"end-systolic:{ESTIMATOR}",
+        source=Source.PRELOAD,
+        compute=position(pressure_mmhg),
+        needs=f"{NEEDS}; end-systolic pressures that come near {pressure_mmhg:.0f} mmHg",
+        sensitivity=_sensitivity(pressure_mmhg),
+        primary=is_left,
+        chamber=chamber,
+        rests_on=frozenset() if is_left else frozenset({"V100"}),
+    )
+
+
+VOLUME_AT_100 = _card(100.0, "LV")
+VOLUME_AT_120 = _card(120.0, "LV")
+RIGHT_VOLUME_AT_20 = _card(20.0, "RV")
+RIGHT_VOLUME_AT_30 = _card(30.0, "RV")
