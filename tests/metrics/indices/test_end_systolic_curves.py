@@ -155,3 +155,22 @@ def test_a_bent_heart_is():
     a, b = heart.espvr_bend_mmhg_per_ml2, heart.ees_mmhg_per_ml
     expected = np.sqrt(b**2 + 4.0 * a * 100.0)
     assert QUADRATIC_ELASTANCE.compute(StageBeats(preload=(run,))).value == pytest.approx(expected, rel=0.03)
+
+
+@pytest.mark.parametrize(
+    "card", [LOGARITHMIC_ELASTANCE, LOGARITHMIC_INTERCEPT, QUADRATIC_INTERCEPT], ids=lambda card: f"{card.name}-{card.estimator}"
+)
+@pytest.mark.parametrize("error", ["pressure_gain", "pressure_mmhg", "volume_gain", "volume_ml"])
+def test_a_small_error_of_the_points_moves_a_curve_by_what_its_card_says(card, error):
+    volume_ml = np.linspace(75.0, 12.0, 12)
+    is_log = card is not QUADRATIC_INTERCEPT
+    pressure_mmhg = LOG if is_log else -0.01 * (volume_ml - 10.0) ** 2 + 2.5 * (volume_ml - 10.0)
+    volume_ml = VOLUME_ML if is_log else volume_ml
+    size = 0.01
+    gains = [1.0 + size if name == error else 1.0 for name in ("pressure_gain", "volume_gain")]
+    offsets = [size if name == error else 0.0 for name in ("pressure_mmhg", "volume_ml")]
+    was = StageBeats(preload=(points(volume_ml, pressure_mmhg),))
+    moved = StageBeats(preload=(points(gains[1] * volume_ml + offsets[1], gains[0] * pressure_mmhg + offsets[0]),))
+    value = card.compute(was).value
+    told = size * getattr(card.sensitivity(was, value), error)
+    assert card.compute(moved).value - value == pytest.approx(told, rel=0.1, abs=3e-4 * value)
