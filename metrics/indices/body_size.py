@@ -9,10 +9,8 @@ from __future__ import annotations
 from collections.abc import Callable
 from dataclasses import replace
 
-from metrics.indices.arterial_elastance import ARTERIAL_ELASTANCE
+from metrics.indices import arterial_elastance, cardiac_output, volumes
 from metrics.indices.card import Estimate, Index, Sensitivity, StageBeats, Withheld
-from metrics.indices.cardiac_output import CARDIAC_OUTPUT
-from metrics.indices.volumes import END_DIASTOLIC_VOLUME, END_SYSTOLIC_VOLUME, STROKE_VOLUME
 
 Factor = Callable[[float], float]
 
@@ -62,10 +60,12 @@ def by_body_surface(index: Index, name: str, title: str, unit: str, factor: Fact
     )
 
 
-END_DIASTOLIC_VOLUME_INDEX = by_body_surface(END_DIASTOLIC_VOLUME, "EDVI", "End-diastolic volume by body surface", "mL/m2", over_area)
-END_SYSTOLIC_VOLUME_INDEX = by_body_surface(END_SYSTOLIC_VOLUME, "ESVI", "End-systolic volume by body surface", "mL/m2", over_area)
-STROKE_VOLUME_INDEX = by_body_surface(STROKE_VOLUME, "SVI", "Stroke volume by body surface", "mL/m2", over_area)
-CARDIAC_INDEX = by_body_surface(CARDIAC_OUTPUT, "CI", "Cardiac output by body surface", "L/min/m2", over_area)
+END_DIASTOLIC_VOLUME_INDEX = by_body_surface(
+    volumes.END_DIASTOLIC_VOLUME, "EDVI", "End-diastolic volume by body surface", "mL/m2", over_area
+)
+END_SYSTOLIC_VOLUME_INDEX = by_body_surface(volumes.END_SYSTOLIC_VOLUME, "ESVI", "End-systolic volume by body surface", "mL/m2", over_area)
+STROKE_VOLUME_INDEX = by_body_surface(volumes.STROKE_VOLUME, "SVI", "Stroke volume by body surface", "mL/m2", over_area)
+CARDIAC_INDEX = by_body_surface(cardiac_output.CARDIAC_OUTPUT, "CI", "Cardiac output by body surface", "L/min/m2", over_area)
 ARTERIAL_ELASTANCE_INDEX = by_body_surface(
-    ARTERIAL_ELASTANCE, "EaI", "Effective arterial elastance by body surface", "mm[Hg].m2/mL", times_area
+    arterial_elastance.ARTERIAL_ELASTANCE, "EaI", "Effective arterial elastance by body surface", "mm[Hg].m2/mL", times_area
 )

@@ -23,22 +23,20 @@ WATT = 1.33322e-4
 """One mmHg mL/s; computed."""
 
 WINDOW_SHARE, ORDER = 0.3, 3
-FEWEST_SAMPLES = ORDER + 2
 
 
 def flow_ml_per_s(volume_ml: FloatArray, sampling_rate_hz: float, systole_samples: float) -> FloatArray:
-    """Return the flow out of the ventricle, positive while it ejects, shape (n,); zeros where there are too few samples for a slope.
+    """Return the flow out of the ventricle, positive while it ejects, shape (n,); beyond its ends the volume stands still.
 
     ``systole_samples`` is the time from end-diastole to the smallest dP/dt.
 
     >>> flow_ml_per_s(100.0 - np.arange(40.0), 250.0, 80.0)[20].round(9)
     np.float64(250.0)
     """
-    window = max(FEWEST_SAMPLES, round(WINDOW_SHARE * systole_samples) | 1)
-    if volume_ml.size < window:
-        return np.zeros_like(volume_ml)
-    slope: FloatArray = signal.savgol_filter(volume_ml, window, ORDER, deriv=1, delta=1.0 / sampling_rate_hz)
-    return -slope
+    window = max(ORDER + 2, round(WINDOW_SHARE * systole_samples) | 1)
+    kernel = signal.savgol_coeffs(window, ORDER, deriv=1, delta=1.0 / sampling_rate_hz)
+    flow: FloatArray = -signal.oaconvolve(np.pad(volume_ml, window // 2, mode="edge"), kernel, mode="valid")
+    return flow
 
 
 def strongest_ejection(run: RunBeats) -> tuple[FloatArray, FloatArray]:

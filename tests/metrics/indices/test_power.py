@@ -2,6 +2,7 @@ from dataclasses import replace
 
 import numpy as np
 import pytest
+from scipy import signal
 
 from metrics.indices.card import RunBeats, StageBeats, Withheld
 from metrics.indices.power import LARGEST_POWER, LARGEST_POWER_BY_FILLING, WATT, flow_ml_per_s, strongest_ejection
@@ -57,8 +58,14 @@ def test_only_chosen_beats_count():
     assert found.beats == 3
 
 
-def test_a_run_shorter_than_the_window_has_no_flow():
-    assert flow_ml_per_s(np.arange(6.0), RATE_HZ, 400.0).tolist() == [0.0] * 6
+def test_the_flow_is_the_slope_of_the_local_cubic_and_calm_at_the_ends():
+    volume = np.random.default_rng(2).normal(0.0, 1.0, 300).cumsum()
+    window = 61
+    expected = -signal.savgol_filter(volume, window, 3, deriv=1, delta=1.0 / RATE_HZ)
+    found = flow_ml_per_s(volume, RATE_HZ, 200.0)
+    np.testing.assert_allclose(found[30:-30], expected[30:-30], atol=1e-9)
+    assert np.abs(found[[0, -1]]).max() < np.abs(expected).max()
+    assert flow_ml_per_s(np.full(6, 80.0), RATE_HZ, 400.0) == pytest.approx(np.zeros(6), abs=1e-9)
 
 
 def test_by_filling_the_square_of_edv_counts():
