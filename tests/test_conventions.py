@@ -70,7 +70,7 @@ def cards(module, kind):
     """The cards a module defines, those it borrows from another left out."""
     text = Path(module.__file__).read_text(encoding="utf-8")
     targets = [target for node in ast.parse(text).body if isinstance(node, ast.Assign) for target in node.targets]
-    assigned = {target.id for target in targets if isinstance(target, ast.Name)}
+    assigned = {name.id for target in targets for name in ast.walk(target) if isinstance(name, ast.Name)}
     return {name: value for name, value in vars(module).items() if name in assigned and isinstance(value, kind)}
 
 
