@@ -5,6 +5,8 @@ Sunagawa 1985, Circ Res 56:586 (read): stroke work is largest at Ea = Ees. The v
 
 from __future__ import annotations
 
+from dataclasses import replace
+
 import numpy as np
 
 from metrics.indices.arterial_elastance import arterial_elastance
@@ -16,16 +18,19 @@ from metrics.indices.pressures import end_systolic_pressure
 def coupling(stage: StageBeats) -> Estimate:
     """Return Ees / Ea, dimensionless; raises `Withheld` when either cannot be had.
 
-    The interval joins both relative half widths in quadrature (first order, independent errors; derived).
+    Each side of the interval joins the relative half widths that move the ratio that way, in quadrature (first order, independent errors;
+    derived): a larger Ea makes it smaller. It has none where Ees or Ea has none.
     """
     ees, ea = end_systolic_elastance(stage), arterial_elastance(stage)
     ratio = ees.value / ea.value
-    low, high = ratio, ratio
-    if ees.fit_low is not None and ees.fit_high is not None:
-        ea_half = 0.0 if ea.fit_low is None or ea.fit_high is None else (ea.fit_high - ea.fit_low) / 2.0
-        half = ratio * float(np.hypot((ees.fit_high - ees.fit_low) / 2.0 / ees.value, ea_half / ea.value))
-        low, high = ratio - half, ratio + half
-    return Estimate(ratio, low, high, ees.beats, ees.runs, ees.left_out)
+    found = replace(ees, value=ratio, fit_low=None, fit_high=None)
+    known = (ees.fit_low, ees.fit_high, ea.fit_low, ea.fit_high)
+    if None in known:
+        return found
+    ees_low, ees_high, ea_low, ea_high = (float(bound) for bound in known if bound is not None)
+    down = np.hypot((ees.value - ees_low) / ees.value, (ea_high - ea.value) / ea.value)
+    up = np.hypot((ees_high - ees.value) / ees.value, (ea.value - ea_low) / ea.value)
+    return replace(found, fit_low=float(ratio * (1.0 - down)), fit_high=float(ratio * (1.0 + up)))
 
 
 def _sensitivity(stage: StageBeats, value: float) -> Sensitivity:
