@@ -14,7 +14,7 @@ import numpy as np
 from metrics.arrays import BoolArray, FloatArray, IntArray, argmax_within, taken
 from metrics.signals.beats import Beats
 from metrics.signals.calibrate import Signals
-from metrics.stats.lines import Line, deming_line
+from metrics.stats.lines import Line, LineFit, deming_fit
 
 TOLERANCE_ML = 0.01
 MOST_STEPS = 50
@@ -72,22 +72,25 @@ def noise_ratio(signals: Signals) -> float:
     return (pressure_span / volume_span) ** 2 if volume_span > 0.0 else 1.0
 
 
-def end_systolic_line(signals: Signals, beats: Beats, chosen: BoolArray) -> EndSystolicLine:
+def end_systolic_line(signals: Signals, beats: Beats, chosen: BoolArray, fit: LineFit | None = None) -> EndSystolicLine:
     """Return the iterated end-systolic line through the ``chosen`` beats, shape (n_beats,).
 
-    Raises ValueError when fewer than four of them have an end-systole or they all have the same load.
+    ``fit`` is how pressures and volumes make a line, Deming's way by default. Raises ValueError when fewer than four of the beats
+    have an end-systole or they all have the same load.
     """
-    ratio = noise_ratio(signals)
+    if fit is None:
+        fit = deming_fit(noise_ratio(signals))
     v0_ml: float | None = None
     earlier: list[float] = []
     for _ in range(MOST_STEPS):
         points = end_systole(signals, beats, v0_ml)
         usable = chosen & np.isfinite(points.esp_mmhg) & np.isfinite(points.volume_ml)
         volume_ml, pressure_mmhg = points.volume_ml[usable], points.esp_mmhg[usable]
-        line = deming_line(volume_ml, pressure_mmhg, ratio)
-        if v0_ml is not None and abs(line.axis_intercept - v0_ml) < TOLERANCE_ML:
+        slope, constant = fit.bare(volume_ml, pressure_mmhg)
+        found_ml = -constant / slope
+        if v0_ml is not None and abs(found_ml - v0_ml) < TOLERANCE_ML:
             break
-        swings = any(abs(line.axis_intercept - seen) < TOLERANCE_ML for seen in earlier)
-        earlier.append(line.axis_intercept)
-        v0_ml = 0.5 * (line.axis_intercept + (v0_ml or 0.0)) if swings else line.axis_intercept
-    return EndSystolicLine(line, volume_ml, pressure_mmhg)
+        swings = any(abs(found_ml - seen) < TOLERANCE_ML for seen in earlier)
+        earlier.append(found_ml)
+        v0_ml = 0.5 * (found_ml + (v0_ml or 0.0)) if swings else found_ml
+    return EndSystolicLine(fit.whole(volume_ml, pressure_mmhg), volume_ml, pressure_mmhg)
