@@ -30,7 +30,8 @@ def end_systolic_elastance(stage: StageBeats) -> Estimate:
 
 def volume_intercept(stage: StageBeats) -> Estimate:
     """Return V0, mL; raises `Withheld` when no run carries a line."""
-    return replace(intercept_estimate(pooled_lines(stage, end_systolic_line_of)), notes=curvature_note(stage))
+    found = intercept_estimate(pooled_lines(stage, end_systolic_line_of))
+    return replace(found, notes=(*found.notes, *curvature_note(stage)))
 
 
 def _intercept_sensitivity(stage: StageBeats, value: float) -> Sensitivity:
