@@ -20,6 +20,7 @@ from metrics.indices import ALL
 from metrics.indices.card import Estimate, Index, RunBeats, Sensitivity, Source, StageBeats, Withheld
 from metrics.indices.end_systolic_elastance import END_SYSTOLIC_ELASTANCE, VOLUME_INTERCEPT
 from metrics.indices.intervals import calibrated_interval
+from metrics.signals.facts import RunFacts
 from metrics.signals.uncertainty import CalibrationUncertainty, calibration_uncertainty
 
 PRE_ONSET = "pre-onset"
@@ -119,19 +120,36 @@ def _values_of(index: Index, stage: Stage, v0_ml: float | None) -> list[StageVal
             for run in preload
             if run not in chief
         ]
-    doubt = _uncertainty(stage, index)
-    values = [_value(index, beats, doubt, run=None, spoiled=bool(spoiled), why=why)]
+    values = [_value(index, beats, _uncertainty(stage, index, beats), run=None, spoiled=bool(spoiled), why=why)]
     for run in steady if index.source is Source.STEADY else preload:
         alone = replace(beats, steady=(run,)) if index.source is Source.STEADY else replace(beats, preload=(run,))
-        values.append(_value(index, alone, doubt, run=run.run, spoiled=bool(spoiled), why=[stage.reasons[check.name] for check in spoiled]))
+        alone_why = [stage.reasons[check.name] for check in spoiled]
+        values.append(_value(index, alone, _uncertainty(stage, index, alone), run=run.run, spoiled=bool(spoiled), why=alone_why))
     return values
 
 
-def _uncertainty(stage: Stage, index: Index) -> CalibrationUncertainty:
-    """Return how uncertain the calibration of the runs is that may bear an index."""
-    bearing = [run.subject.facts for run in stage.runs if _matters(run, index)] or [run.subject.facts for run in stage.runs]
+def _uncertainty(stage: Stage, index: Index, beats: StageBeats) -> CalibrationUncertainty:
+    """Return how uncertain the calibration of the runs is that bear an index.
+
+    What is made of steady and preload-reduction runs together owes to one calibration that its errors cancel, Ees / Ea first of all: where
+    those runs have calibrations of their own nothing is told.
+    """
+    used = {run.run for run in (*(beats.steady if index.source is not Source.PRELOAD else ()), *_occluded(index, beats))}
+    bearing = [run.subject.facts for run in stage.runs if run.subject.facts.run in used]
+    if index.source is Source.BOTH and len({_calibration(facts) for facts in bearing}) > 1:
+        return CalibrationUncertainty()
     found = [calibration_uncertainty(facts.pressure, facts.volume) for facts in bearing]
     return reduce(CalibrationUncertainty.joined, found) if found else CalibrationUncertainty()
+
+
+def _occluded(index: Index, beats: StageBeats) -> tuple[RunBeats, ...]:
+    return () if index.source is Source.STEADY else beats.preload
+
+
+def _calibration(facts: RunFacts) -> tuple[object, ...]:
+    """Return what tells one calibration from another: not its instants, which count from each run's own beginning."""
+    pressure = facts.pressure
+    return pressure.points, tuple(zero.mmhg for zero in pressure.zeros), pressure.zero_sd_mmhg, replace(facts.volume, age_hours=None)
 
 
 def _value(index: Index, beats: StageBeats, doubt: CalibrationUncertainty, *, run: str | None, spoiled: bool, why: list[str]) -> StageValue:
