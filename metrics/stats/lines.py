@@ -250,23 +250,21 @@ def interval_of(
     """Return the line with its intervals from the covariance of (slope, constant), shape (2, 2).
 
     They reach as many standard errors as ``strays`` says of slope and axis intercept, by default those of t with points - 2 degrees of
-    freedom.
+    freedom. The standard error told is the one that t makes the slope's interval of.
     """
-    t = float(stats.t.ppf(0.5 + confidence / 2.0, points - 2))
-    t, t_axis = (t, t) if strays is None else strays
-    slope_se = float(np.sqrt(covariance[0, 0]))
-    variances = float(covariance[1, 1]), float(covariance[0, 0]), float(-covariance[0, 1])
-    low, high, g = fieller(-constant, slope, *variances, t_axis)
-    g = max(g, t**2 * covariance[0, 0] / slope**2 if slope else float("inf"))
+    student = float(stats.t.ppf(0.5 + confidence / 2.0, points - 2))
+    reach, reach_axis = (student, student) if strays is None else strays
+    half = reach * float(np.sqrt(covariance[0, 0]))
+    low, high, g = fieller(-constant, slope, float(covariance[1, 1]), float(covariance[0, 0]), float(-covariance[0, 1]), reach_axis)
     return Line(
         slope=slope,
         axis_intercept=-constant / slope,
-        slope_low=slope - t * slope_se,
-        slope_high=slope + t * slope_se,
+        slope_low=slope - half,
+        slope_high=slope + half,
         intercept_low=low,
         intercept_high=high,
-        slope_se=slope_se,
-        fieller_g=float(g),
+        slope_se=half / student,
+        fieller_g=max(g, (half / slope) ** 2 if slope else float("inf")),
         points=points,
     )
 

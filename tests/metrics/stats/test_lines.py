@@ -1,10 +1,14 @@
+from functools import partial
+
 import numpy as np
 import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 from scipy import stats
+from scipy.signal import lfilter
 
-from metrics.stats.lines import deming, deming_line, fieller, interval_of, least_squares
+from metrics.stats import lines
+from metrics.stats.lines import deming, deming_line, fieller, interval_of, least_squares, least_squares_line, unattenuated_line
 
 # an end-systolic relation of seven beats; every answer below was computed apart from this program
 VOLUME_ML = np.array([62.0, 58.0, 55.0, 50.0, 46.0, 43.0, 39.0])
@@ -155,3 +159,76 @@ def test_deming_takes_out_what_noise_on_the_load_axis_does_to_least_squares():
     x, y = true_x + rng.normal(0.0, 2.0, true_x.size), 2.0 * true_x + rng.normal(0.0, 2.0, true_x.size)
     assert least_squares(x, y)[0] < 1.85
     assert deming(x, y, 1.0)[0] == pytest.approx(2.0, rel=0.01)
+
+
+WAYS = {
+    "deming": lambda x, y: deming_line(x, y, (2.0 / 0.8) ** 2),
+    "unattenuated": lambda x, y: unattenuated_line(x, y, 0.64),
+    "least squares": least_squares_line,
+}
+WAY = pytest.mark.parametrize("line_of", WAYS.values(), ids=WAYS)
+
+
+def occlusion(draw, count, near=0.0):
+    """Points of slope 2 about 15 whose scatter correlates from beat to beat."""
+    loads = np.linspace(120.0, 75.0, count)
+    scatter = lfilter([np.sqrt(1.0 - near**2)], [1.0, -near], draw.standard_normal(count + 50))[50:]
+    return loads + 0.8 * draw.standard_normal(count), 2.0 * (loads - 15.0) + 2.0 * scatter
+
+
+@WAY
+@pytest.mark.parametrize(("count", "near", "least"), [(15, 0.0, 91.0), (16, 0.0, 91.0), (20, 0.3, 88.0), (40, 0.0, 91.0), (40, 0.3, 89.0)])
+def test_lines_hold_the_truth_whichever_way_their_interval_is_made(line_of, count, near, least):
+    draw = np.random.default_rng(14)
+    held = []
+    for _ in range(150):
+        line = line_of(*occlusion(draw, count, near))
+        held.append((line.slope_low <= 2.0 <= line.slope_high, line.intercept_low <= 15.0 <= line.intercept_high))
+    assert np.all(100.0 * np.mean(held, axis=0) >= least)
+    assert np.all(100.0 * np.mean(held, axis=0) <= 99.4)
+
+
+def test_blocks_widen_the_interval_where_neighbours_resemble_each_other_and_the_jackknife_does_not():
+    draw = np.random.default_rng(15)
+    errors = {near: np.median([deming_line(*occlusion(draw, 60, near), 6.25).slope_se for _ in range(30)]) for near in (0.0, 0.7)}
+    assert errors[0.7] > 1.4 * errors[0.0]
+
+
+@WAY
+@pytest.mark.parametrize("gain", [0.5, 4.0])
+def test_an_interval_by_blocks_follows_a_change_of_units(line_of, gain):
+    x, y = occlusion(np.random.default_rng(16), 30)
+    plain, moved = (
+        line_of(x, y),
+        deming_line(x, gain * y + 8.0, 6.25 * gain**2) if line_of is WAYS["deming"] else line_of(x, gain * y + 8.0),
+    )
+    for name in ("slope", "slope_low", "slope_high", "slope_se"):
+        assert getattr(moved, name) == pytest.approx(gain * getattr(plain, name), rel=1e-6)
+
+
+@WAY
+def test_a_long_line_without_scatter_is_found_exactly(line_of):
+    x = np.linspace(120.0, 75.0, 24)
+    line = line_of(x, 2.0 * (x - 15.0))
+    tolerance = 0.02 if line_of is WAYS["unattenuated"] else 1e-6
+    assert (line.slope, line.axis_intercept) == pytest.approx((2.0, 15.0), rel=tolerance)
+    assert line.slope_low <= line.slope <= line.slope_high
+
+
+@WAY
+def test_a_long_line_is_the_same_each_time_and_without_its_memory(line_of):
+    x, y = occlusion(np.random.default_rng(17), 24)
+    first = line_of(x, y)
+    lines._by_blocks.cache_clear()
+    assert line_of(x.copy(), y.copy()) == first
+    assert line_of(x[::2].repeat(2), y) != first
+
+
+def test_what_each_point_adds_to_a_slope_is_what_leaving_it_out_takes_away():
+    x, y = occlusion(np.random.default_rng(18), 200)
+    others = ~np.eye(200, dtype=bool)
+    for rows in (partial(lines._deming_rows, noise_ratio=6.25), partial(lines._unattenuated_rows, noise_variance=0.64)):
+        slope, _, moved = rows(x[None, :], y[None, :])
+        left_out, _, _ = rows(np.tile(x, (200, 1))[others].reshape(200, 199), np.tile(y, (200, 1))[others].reshape(200, 199))
+        assert moved.sum() == pytest.approx(0.0, abs=1e-9)
+        np.testing.assert_allclose(moved[0], slope - left_out, atol=0.05 * np.abs(moved).max())
