@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
+from functools import cached_property
 
 import numpy as np
 
@@ -63,7 +64,7 @@ class RunVerdict:
     findings: tuple[Finding, ...]
     doubted_by: tuple[Check, ...] = ()
 
-    @property
+    @cached_property
     def failed(self) -> tuple[Check, ...]:
         """Return the checks that failed on the run: its own, and those of the acquisition that name it."""
         own = tuple(j.check for j in self.judged if j.check.level is Level.RUN and j.worst() is Verdict.FAIL)

@@ -92,8 +92,12 @@ class RunBeats:
         return values[self.chosen]
 
     def end_systole(self, v0_ml: float | None) -> EndSystole:
-        """Return end-systole of every beat of the run."""
-        return end_systole(self.signals, self.beats, v0_ml)
+        """Return end-systole of every beat of the run, looked for once by each V0."""
+        key = ("end-systole", v0_ml)
+        if key not in self._known:
+            self._known[key] = end_systole(self.signals, self.beats, v0_ml)
+        found: EndSystole = self._known[key]  # type: ignore[assignment]  # what stands under this key
+        return found
 
 
 @dataclass(frozen=True)

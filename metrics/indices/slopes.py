@@ -16,9 +16,9 @@ from collections.abc import Callable
 from dataclasses import dataclass
 
 import numpy as np
-from scipy import stats
 
 from metrics.indices.card import Estimate, RunBeats, StageBeats, Withheld
+from metrics.stats.bootstrap import student
 from metrics.stats.lines import Line
 
 FEWEST_POINTS = 5
@@ -103,11 +103,11 @@ class _Half:
 def _joint_half(halves: list[float], scatter: float, lines: tuple[Line, ...]) -> _Half:
     """Return the half width of a mean of runs from each run's own and from the standard deviation of their values."""
     count = len(lines)
-    errors = [half / float(stats.t.ppf(0.975, line.points - 2)) for half, line in zip(halves, lines, strict=True)]
+    errors = [half / student(line.points - 2) for half, line in zip(halves, lines, strict=True)]
     within, between = float(np.sqrt(np.sum(np.square(errors)))) / count, scatter / np.sqrt(count)
-    reach = float(stats.t.ppf(0.975, sum(line.points - 2 for line in lines)))
+    reach = student(sum(line.points - 2 for line in lines))
     if between <= within:
         return _Half(reach * within, is_widened=False)
-    beyond = float(stats.t.ppf(0.975, max(count - 1, LEAST_FREEDOM))) - reach
+    beyond = student(max(count - 1, LEAST_FREEDOM)) - reach
     excess = 1.0 - (within / between) ** 2
     return _Half(between * (reach + excess * max(beyond, 0.0)), is_widened=True)

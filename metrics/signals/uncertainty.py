@@ -7,6 +7,7 @@ uncertainty and joined last. First order, derived; the terms follow from the cal
 from __future__ import annotations
 
 from dataclasses import dataclass
+from functools import lru_cache
 
 import numpy as np
 
@@ -41,6 +42,7 @@ class CalibrationUncertainty:
         )
 
 
+@lru_cache(maxsize=64)
 def calibration_uncertainty(pressure: PressureCalibration, volume: VolumeCalibration) -> CalibrationUncertainty:
     """Return how uncertain a run's calibration is.
 
