@@ -104,7 +104,7 @@ def _joint_half(halves: list[float], scatter: float, lines: tuple[Line, ...]) ->
     """Return the half width of a mean of runs from each run's own and from the standard deviation of their values."""
     count = len(lines)
     errors = [half / student(line.points - 2) for half, line in zip(halves, lines, strict=True)]
-    within, between = float(np.sqrt(np.sum(np.square(errors)))) / count, scatter / np.sqrt(count)
+    within, between = float(np.sqrt(np.sum(np.square(errors)))) / count, scatter / float(np.sqrt(count))
     reach = student(sum(line.points - 2 for line in lines))
     if between <= within:
         return _Half(reach * within, is_widened=False)
