@@ -12,7 +12,7 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
-from checks.check import Check
+from checks.check import Check, Verdict
 from checks.verdicts import RunVerdict, spoilers
 from metrics.arrays import BoolArray
 from metrics.indices import ALL
@@ -139,16 +139,25 @@ def _run_reason(run: RunVerdict, index: Index) -> str:
 
 
 def _steady_runs(stage: Stage, index: str) -> tuple[tuple[RunBeats, ...], bool]:
-    """Return the steady runs that may bear an index, or the beats before the onsets where there are none."""
+    """Return the steady runs that may bear an index, or the beats before the onsets where there are none.
+
+    Where a fault took the steady runs, only runs that the same checks looked at and passed may stand in: one that such a check cannot
+    judge may have the fault too.
+    """
     steady = tuple(_beats(run, run.accepted) for run in stage.of_kind("steady") if _is_sound(run, index))
     if steady:
         return steady, False
+    guilty = {check.name for run in stage.of_kind("steady") for check in spoilers(index, run.failed)}
     before = []
     for run in stage.of_kind("preload-reduction"):
         window = run.subject.window
-        if _is_sound(run, index) and window is not None:
+        if _is_sound(run, index) and guilty <= _passed(run) and window is not None:
             before.append(_beats(run, run.accepted & (np.arange(run.accepted.size) < window.onset_at)))
     return tuple(before), bool(before)
+
+
+def _passed(run: RunVerdict) -> set[str]:
+    return {judged.check.name for judged in run.judged if judged.worst() is Verdict.PASS}
 
 
 def _preload_runs(stage: Stage, index: str) -> tuple[RunBeats, ...]:

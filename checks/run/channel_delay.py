@@ -10,13 +10,20 @@ before its valve opens, only of a gross delay.
 
 from __future__ import annotations
 
+import numpy as np
+
 from checks.check import Check, Level, Limits, Measured, single
 from checks.spoils import DELAY, VOLUME_LATE
 from checks.subject import REGURGITATION, RunSubject
 
 USUAL_S = {"LV": 0.003, "RV": -0.012}
 """How long after dP/dt maximum ejection begins: in a sound left ventricle 0-10 ms (from memory; -4 to 7 ms on simulated hearts with
-activation, relaxation, inertance and resistance varied by half and more), in the right one -25 to -2 ms on simulated hearts."""
+activation, relaxation, inertance and resistance varied by half and more), in the right one at `USUAL_CYCLE_S`."""
+
+USUAL_CYCLE_S = 0.8
+EARLIER_BY_CYCLE = {"LV": 0.0, "RV": 0.04}
+"""The longer the diastole, the lower the pressure an artery has fallen to and the earlier its valve opens (windkessel). In the right
+ventricle, which hardly exceeds that pressure, each second of cycle length makes 40 ms (computed: 0 ms at 120 a minute, -20 at 55)."""
 
 REMEDY = "send the conditioner's delay of each channel in delay_ms, or record both through the same filter"
 
@@ -25,7 +32,9 @@ def volume_late_ms(subject: RunSubject) -> float:
     """Return by how much volume comes later than usual after pressure, ms, below 0 where pressure is late; NaN with regurgitation."""
     if subject.facts.conditions & REGURGITATION:
         return float("nan")
-    return 1000.0 * (subject.volume_delay_s - USUAL_S[subject.facts.chamber])
+    chamber = subject.facts.chamber
+    longer_s = float(np.nanmedian(subject.known_beats().rr_s)) - USUAL_CYCLE_S
+    return 1000.0 * (subject.volume_delay_s - USUAL_S[chamber] + EARLIER_BY_CYCLE[chamber] * longer_s)
 
 
 def apart_ms(subject: RunSubject) -> Measured:

@@ -13,7 +13,7 @@ import functools
 import numpy as np
 
 from checks.check import Check, Level, Limits, Measured, single
-from checks.spoils import INTERCEPTS, PRESSURE_EXTREMES, STEEPEST, VOLUME_END_SYSTOLE
+from checks.spoils import INTERCEPTS, PRESSURE_EXTREMES, STEEPEST, VOLUME_END_SYSTOLE, WORK_SLOPES
 from checks.subject import RunSubject
 from metrics.arrays import span
 from metrics.signals.filters import slope_per_s, steadied, zero_phase
@@ -88,7 +88,7 @@ PRESSURE = Check(
     ),
     reason="noise has an SD of {value:.1%} of the pulse in the filtered pressure (limit {limit:.0%})",
     remedy="look for a loose connector, air in a line, or an amplifier's gain set too low",
-    spoils=PRESSURE_EXTREMES,
+    spoils=PRESSURE_EXTREMES | WORK_SLOPES,
 )
 SLOPE = Check(
     name="dpdt-noise",

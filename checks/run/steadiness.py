@@ -14,8 +14,8 @@ import numpy as np
 from checks.check import Check, Level, Limits, Measured, single
 from checks.spoils import END_DIASTOLE, STEADY_STATE, STROKE_WORK
 from checks.stakes import edp_at_stake_mmhg
-from checks.subject import RunSubject
-from metrics.arrays import FloatArray, robust_sd
+from checks.subject import RunSubject, once_a_run
+from metrics.arrays import FloatArray, median_of_known, robust_sd
 from metrics.stats.trends import is_trend_by_blocks, trend_per_s
 
 BREATH_S = 5.0
@@ -23,10 +23,11 @@ IRREGULAR = 0.10
 """Of cycle length: beyond that filling varies so much from beat to beat that a trend in four breaths is suspect at most; house default."""
 
 
+@once_a_run
 def change_of_preload(subject: RunSubject) -> Measured:
     """Return by how much EDV changes over the run, over its median; 0 where breaths do not bear it out, NaN below four; shape ()."""
     edv_ml = subject.known_beats().edv_ml
-    return _change_over(subject, edv_ml, float(np.nanmedian(edv_ml)))
+    return _change_over(subject, edv_ml, median_of_known(edv_ml))
 
 
 def change_of_edp(subject: RunSubject) -> Measured:
@@ -37,7 +38,7 @@ def change_of_edp(subject: RunSubject) -> Measured:
 def change_of_work(subject: RunSubject) -> Measured:
     """Return how far a change over the run puts the median of stroke work off, over it; 0 where EDV does not change with it; shape ()."""
     work_mmhg_ml = subject.known_beats().sw_mmhg_ml
-    return _off_with_preload(subject, work_mmhg_ml, float(np.nanmedian(work_mmhg_ml)))
+    return _off_with_preload(subject, work_mmhg_ml, median_of_known(work_mmhg_ml))
 
 
 def _off_with_preload(subject: RunSubject, values: FloatArray, size: float) -> Measured:
@@ -56,9 +57,9 @@ def _change_over(subject: RunSubject, values: FloatArray, size: float) -> Measur
     trends = is_trend_by_blocks(time_s, values, min(BREATH_S, float(np.ptp(time_s)) / 4.0) if time_s.size >= 12 else BREATH_S)
     if trends is None:
         return single(np.nan)
-    change = abs(trend_per_s(time_s, values)) * float(np.ptp(time_s)) / size
-    is_regular = robust_sd(beats.rr_s) < IRREGULAR * float(np.nanmedian(beats.rr_s))
-    return Measured(np.array(change if trends else 0.0), corroborated=np.array(is_regular))
+    change = abs(trend_per_s(time_s, values)) * float(np.ptp(time_s)) / size if trends else 0.0
+    is_regular = robust_sd(beats.rr_s) < IRREGULAR * median_of_known(beats.rr_s)
+    return Measured(np.array(change), corroborated=np.array(is_regular))
 
 
 def _evened(values: FloatArray, filling_s: FloatArray) -> FloatArray:

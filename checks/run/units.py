@@ -9,7 +9,7 @@ A channel that does not move at all is not evaluated; that is another check's.
 from __future__ import annotations
 
 from checks.check import Check, Level, Limits, Measured, single
-from checks.spoils import PRESSURE_GAIN, PRESSURE_OFFSET, VOLUME_GAIN, VOLUME_OFFSET
+from checks.spoils import PRESSURE_GAIN, PRESSURE_OFFSET, VOLUME_SHAPE
 from checks.subject import RunSubject
 from metrics.arrays import span
 
@@ -59,5 +59,5 @@ VOLUME = Check(
     ),
     reason="volume moves by {value:.3g} mL over the run, as if it were sent in another unit (limit {limit:g} mL)",
     remedy="confirm the unit of the volume channel (L, mL or uL) and send the package again",
-    spoils=VOLUME_GAIN | VOLUME_OFFSET,
+    spoils=VOLUME_SHAPE,
 )
