@@ -17,7 +17,7 @@ import numpy as np
 from checks.check import Check, Level, Limits, Measured, single
 from checks.run.channel_delay import volume_late_ms
 from checks.spoils import END_SYSTOLE, PRESSURE_EXTREMES, PRESSURE_LATE
-from checks.subject import RunSubject
+from checks.subject import RunSubject, once_a_run
 
 LATE_MS = {"LV": 13.0, "RV": 15.0}
 """What bears out that pressure has not followed, where it is high when filling begins."""
@@ -30,6 +30,7 @@ def pressure_late_ms(subject: RunSubject) -> Measured:
     return single(-volume_late_ms(subject))
 
 
+@once_a_run
 def pressure_left(subject: RunSubject) -> Measured:
     """Return how much of its range pressure still has to fall once the ventricle fills, shape (); borne out where pressure is late too."""
     late = np.array(-volume_late_ms(subject) > LATE_MS[subject.facts.chamber])

@@ -160,7 +160,8 @@ def test_volume_on_ever_coarser_steps(step, expected):
 
 def test_a_channel_of_one_value_has_no_step():
     assert np.isnan(converter_step(np.ones(10)))
-    assert np.isnan(step_share(np.empty(0)))
+    still = np.full(simulated().recording.channels["pressure"].samples.size, 4.0)
+    assert np.isnan(step_share(rerecorded(simulated(), pressure=still), "pressure"))
 
 
 def test_a_line_that_swings_after_relaxation_rings_and_a_tip_does_not():
