@@ -11,17 +11,16 @@ from __future__ import annotations
 from checks.check import Check, Level, Limits, Measured, single
 from checks.spoils import PRESSURE_GAIN, PRESSURE_OFFSET, VOLUME_SHAPE
 from checks.subject import RunSubject
-from metrics.arrays import span
 
 
 def pressure_span(subject: RunSubject) -> Measured:
     """Return how far the calibrated pressure moves over the run, mmHg, shape ()."""
-    return single(span(subject.known_signals().pressure_mmhg))
+    return single(subject.known_signals().pressure_reach_mmhg)
 
 
 def volume_span(subject: RunSubject) -> Measured:
     """Return how far the calibrated volume moves over the run, mL, shape ()."""
-    return single(span(subject.known_signals().volume_ml))
+    return single(subject.known_signals().volume_reach_ml)
 
 
 PRESSURE = Check(
