@@ -15,7 +15,7 @@ import numpy as np
 from checks.check import Check, Level, Limits, Measured
 from checks.run.noise import responses
 from checks.subject import RunSubject
-from metrics.arrays import FloatArray
+from metrics.arrays import FloatArray, median_of_known
 
 WINDOW_S = 0.030
 LEAST_WINDOW = 6
@@ -72,7 +72,7 @@ def bursts(subject: RunSubject) -> Measured:
     steep = responses(signals.sampling_rate_hz, subject.facts.chamber)[2]
     moved = np.ptp(channel.samples[np.isfinite(channel.samples)])
     scale = np.ptp(signals.pressure_mmhg) / moved if moved > 0.0 else np.nan
-    share = loudest * scale * steep / abs(float(np.nanmedian(beats.dpdt_max_mmhg_per_s)))
+    share = loudest * scale * steep / abs(median_of_known(beats.dpdt_max_mmhg_per_s))
     return Measured(np.where(loudest > STANDS_OUT * quiet, share, np.where(np.isfinite(share), 0.0, np.nan)))
 
 

@@ -10,11 +10,10 @@ before its valve opens, only of a gross delay.
 
 from __future__ import annotations
 
-import numpy as np
-
 from checks.check import Check, Level, Limits, Measured, single
 from checks.spoils import DELAY, VOLUME_LATE
 from checks.subject import REGURGITATION, RunSubject
+from metrics.arrays import median_of_known
 
 USUAL_S = {"LV": 0.003, "RV": -0.012}
 """How long after dP/dt maximum ejection begins: in a sound left ventricle 0-10 ms (from memory; -4 to 7 ms on simulated hearts with
@@ -33,7 +32,7 @@ def volume_late_ms(subject: RunSubject) -> float:
     if subject.facts.conditions & REGURGITATION:
         return float("nan")
     chamber = subject.facts.chamber
-    longer_s = float(np.nanmedian(subject.known_beats().rr_s)) - USUAL_CYCLE_S
+    longer_s = median_of_known(subject.known_beats().rr_s) - USUAL_CYCLE_S
     return 1000.0 * (subject.volume_delay_s - USUAL_S[chamber] + EARLIER_BY_CYCLE[chamber] * longer_s)
 
 
