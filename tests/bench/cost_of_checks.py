@@ -37,6 +37,9 @@ RATE_HZ = 1000.0
 WANTED = 5.0
 """The most that all checks of runs and acquisition may cost, in passes."""
 
+LEAST_REPEATS = 10
+"""Of what is compared with the wanted ratio: both sides of it are short, and one busy moment would decide."""
+
 CONDITIONS = {
     "rest": Conditions(duration_s=480.0),
     **{f"ramp-{number}": Conditions(duration_s=60.0, occlusion=Occlusion(onset_s=20.0, deflation_s=32.0)) for number in (1, 2)},
@@ -88,11 +91,11 @@ def costs(acquisition: Acquisition, repeats: int) -> tuple[float, list[Cost], li
         reading = Cost(
             "reading, calibrating, cutting into beats", fastest(lambda: [prepared_run(files, manifest, r) for r in manifest.runs], repeats)
         )
-    unit_s = fastest(lambda: one_pass(subjects), max(repeats, 5))
+    unit_s = fastest(lambda: one_pass(subjects), max(repeats, LEAST_REPEATS))
     of_level = {level: [check for check in CHECKS if check.level is level] for level in Level}
     above = [check for check in CHECKS if check.level is not Level.BEAT]
     levels = [
-        Cost("all checks of runs and acquisition", fastest(lambda: _judged(subjects, above, manifest), repeats)),
+        Cost("all checks of runs and acquisition", fastest(lambda: _judged(subjects, above, manifest), max(repeats, LEAST_REPEATS))),
         Cost("checks of runs", fastest(lambda: [judge_run(fresh(one), of_level[Level.RUN], Rules({})) for one in subjects], repeats)),
         Cost("checks of beats", fastest(lambda: [judge_run(fresh(one), of_level[Level.BEAT], Rules({})) for one in subjects], repeats)),
         reading,
