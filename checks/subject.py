@@ -137,7 +137,14 @@ class RunSubject:
 
     @property
     def _counting(self) -> BoolArray:
-        return np.ones(len(self.known_beats()), dtype=bool) if self.accepted is None else self.accepted
+        """Return the accepted beats, of an occlusion the fullest: a ventricle that empties opens its valve ever later."""
+        beats = self.known_beats()
+        accepted = np.ones(len(beats), dtype=bool) if self.accepted is None else self.accepted
+        if self.facts.kind != "preload-reduction":
+            return accepted
+        known = beats.edv_ml[accepted & np.isfinite(beats.edv_ml)]
+        least_ml = np.sort(known)[-max(known.size // 3, min(FEWEST_POINTS + 2, known.size))] if known.size else np.nan
+        return np.asarray(accepted & (beats.edv_ml >= least_ml), dtype=bool)
 
     def mains(self, name: str) -> Mains:
         """Return how much of the mains a channel holds; raises ValueError when the run does not hold the channel."""
@@ -169,8 +176,11 @@ class RunSubject:
 
     @property
     def at_rest(self) -> BoolArray:
-        """Return which accepted beats show the heart at rest: all of a steady run, of an occlusion those before its onset."""
-        accepted = np.zeros(0, dtype=bool) if self.accepted is None else self.accepted
+        """Return which accepted beats show the heart at rest: all of a steady run, of an occlusion those before its onset.
+
+        Every beat counts as accepted until the beat checks have spoken.
+        """
+        accepted = np.ones(0 if self.beats is None else len(self.beats), dtype=bool) if self.accepted is None else self.accepted
         if self.facts.kind == "preload-reduction":
             onset_at = 0 if self.window is None else self.window.onset_at
             return accepted & (np.arange(accepted.size) < onset_at)
