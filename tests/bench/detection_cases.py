@@ -229,6 +229,14 @@ def examined(case: Case) -> Examined:
     return Examined(case, tuple(outcomes), failed, suspect, names, _rejecting(found))
 
 
+def verdicts(case: Case) -> frozenset[str]:
+    """Return the verdicts beside pass that checks of runs and acquisition have in one case, as "name fail"."""
+    acquisition, _ = clean_acquisition(case.heart, case.rate_hz, seed_of(case.heart))
+    injected = case.ladder.inject(acquisition, case.severity)
+    failed, suspect = _named(_assessed(injected.acquisition))
+    return frozenset(f"{name} fail" for name in failed) | frozenset(f"{name} suspect" for name in suspect)
+
+
 def _is_right(index: str, value: float, sound: _Published, true: float) -> bool:
     return not moved(index, value, sound.value, sound.half) or not moved(index, value, true, sound.half)
 

@@ -4,13 +4,13 @@ from itertools import pairwise
 import numpy as np
 import pytest
 
-from metrics.signals.stillness import still_stretches
 from checks.check import Verdict
 from checks.subject import RunSubject
 from checks.verdicts import Rules, sentence
 from flows.sources.simulated.catheter import Catheter
 from flows.sources.simulated.recorded import NOISELESS
 from flows.sources.simulated.rhythm import Conditions, Occlusion
+from metrics.signals.stillness import still_stretches
 from tests.checks.made_subjects import (
     BEAT_SAMPLES,
     COARSE,
