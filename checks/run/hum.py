@@ -45,9 +45,9 @@ DIASTOLE = Check(
     measure=pressure_hum,
     unit="1",
     limits=Limits(
-        suspect_above=0.01,
-        fail_above=0.02,
-        basis="end-diastole is found by a threshold of dP/dt, so its pressure moves by the amplitude: 2 % of the pulse is a quarter of EDP",
+        suspect_above=0.004,
+        fail_above=0.008,
+        basis="end-diastole is found by a threshold of dP/dt, so its pressure moves by the amplitude: 0.8 % of the pulse is a tenth of EDP",
     ),
     reason="mains hum of {value:.1%} of the pulse is left in the filtered pressure and steers end-diastole (limit {limit:.1%})",
     remedy=REMEDY,

@@ -13,7 +13,7 @@ import functools
 import numpy as np
 
 from checks.check import Check, Level, Limits, Measured, single
-from checks.spoils import INTERCEPTS, PRESSURE_EXTREMES, STEEPEST, VOLUME_END_SYSTOLE, WORK_SLOPES
+from checks.spoils import END_DIASTOLE, INTERCEPTS, PRESSURE_EXTREMES, STEEPEST, VOLUME_END_SYSTOLE, WORK_SLOPES
 from checks.subject import RunSubject, once_a_run
 from metrics.signals.filters import slope_per_s, steadied, zero_phase
 from metrics.signals.mains import Mains
@@ -104,7 +104,7 @@ SLOPE = Check(
     ),
     reason="noise has an SD of {value:.1%} of the largest dP/dt (limit {limit:.0%})",
     remedy="look for a loose connector, or record with a finer converter",
-    spoils=STEEPEST,
+    spoils=STEEPEST | END_DIASTOLE,
 )
 VOLUME = Check(
     name="volume-noise",

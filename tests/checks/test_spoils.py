@@ -190,7 +190,7 @@ EXPECTED = {
     "dpdt-hum": spoils.STEEPEST,
     "volume-hum": spoils.VOLUME_SHAPE,
     "pressure-noise": spoils.PRESSURE_EXTREMES | spoils.WORK_SLOPES,
-    "dpdt-noise": spoils.STEEPEST,
+    "dpdt-noise": spoils.STEEPEST | spoils.END_DIASTOLE,
     "volume-noise": spoils.VOLUME_END_SYSTOLE,
     "volume-noise-intercept": spoils.INTERCEPTS,
     "edp-quantisation": spoils.END_DIASTOLE,

@@ -86,7 +86,8 @@ def test_steps_of_one_unit_withhold_nothing(heart):
 
 
 @pytest.mark.parametrize(
-    ("amplitude", "expected"), [(0.5, (P, P, P)), (3.0, (S, P, P)), (8.0, (F, S, S)), (14.0, (F, S, F)), (25.0, (F, F, F))]
+    ("amplitude", "expected"),
+    [(0.5, (P, P, P)), (1.5, (S, P, P)), (3.0, (F, P, P)), (8.0, (F, S, S)), (14.0, (F, S, F)), (25.0, (F, F, F))],
 )
 def test_hum_first_reaches_end_diastole_then_the_slope_then_all_pressure(amplitude, expected):
     assert tuple(verdicts(mains(simulated(), "pressure", amplitude), HUM[:3]).values()) == expected
