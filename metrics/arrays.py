@@ -53,7 +53,7 @@ def argmax_by_owner(values: FloatArray, owner: IntArray, count: int) -> IntArray
     found = np.full(count, -1, dtype=np.int64)
     if values.size == 0:
         return found
-    known = np.where(np.isnan(values), -np.inf, values)
+    known = np.nan_to_num(values, nan=-np.inf)  # minus infinity becomes the least finite number, and so stays above missing
     first = _firsts(owner)
     filled = owner[first]
     peak = np.full(count, -np.inf)

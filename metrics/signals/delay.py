@@ -29,7 +29,7 @@ SHARES = (0.03, 0.10, 0.30)
 """Of the stroke volume: the first two tell the onset, the last two whether there is one."""
 
 REFILLED = 0.10
-LARGEST_DISAGREEMENT_S = 0.010
+LARGEST_DISAGREEMENT_S = 0.007
 LEAST_BEATS = 5
 MOST_BEATS = 60
 
