@@ -173,7 +173,10 @@ def _spread(found: Measured, count: int) -> tuple[FloatArray, FloatArray, BoolAr
 
 def _beyond(value: FloatArray, above: float | None, below: float | None) -> tuple[BoolArray, FloatArray]:
     """Return which values lie beyond either bound, and the bound each one crossed."""
-    over = np.zeros(value.shape, dtype=bool) if above is None else value > above
-    under = np.zeros(value.shape, dtype=bool) if below is None else value < below
-    crossed = np.where(over, np.nan if above is None else above, np.where(under, np.nan if below is None else below, np.nan))
-    return over | under, crossed
+    beyond, crossed = np.zeros(value.shape, dtype=bool), np.full(value.shape, np.nan)
+    for bound, is_beyond in ((below, np.less), (above, np.greater)):
+        if bound is not None:
+            this = is_beyond(value, bound)
+            beyond |= this
+            crossed[this] = bound
+    return beyond, crossed

@@ -175,5 +175,7 @@ STEADY_STATE = frozenset(
 """A run that is not steady: all that is a median over it and depends on load."""
 
 PRESSURE_SHAPE = PRESSURE_GAIN | PRESSURE_OFFSET | frozenset({"tau"})
-VOLUME_SHAPE = VOLUME_GAIN | VOLUME_OFFSET | frozenset({"Ees_Ea", "PRSW", "efficiency"})
+VOLUME_SHAPE = VOLUME_LATE | frozenset({"ESP"})
+"""A volume that does not go the way the ventricle's does: also the pressure read where it says that systole ends."""
+
 EVERYTHING = PRESSURE_SHAPE | VOLUME_SHAPE | TIME_SCALE | PRELOAD_SLOPES

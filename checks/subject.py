@@ -2,13 +2,14 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
-from dataclasses import dataclass, field
-from functools import cached_property
+from collections.abc import Callable, Mapping
+from dataclasses import dataclass, field, replace
+from functools import cached_property, wraps
+from typing import Any, TypeVar, cast
 
 import numpy as np
 
-from metrics.arrays import BoolArray, FloatArray, IntArray
+from metrics.arrays import BoolArray, FloatArray, IntArray, span
 from metrics.indices.card import RunBeats
 from metrics.indices.end_systole import end_systole
 from metrics.signals.beats import Beats
@@ -28,6 +29,24 @@ FEWEST_POINTS = 5
 
 REGURGITATION = frozenset({"mitral-regurgitation", "tricuspid-regurgitation", "aortic-regurgitation", "shunt"})
 """Conditions under which forward stroke volume differs from the ventricle's own."""
+
+AS_RECORDED = ("window", "standing", "saline_intercept", "gaps", "_mains", "_reach")
+"""What is computed from a run and does not depend on which of its beats are accepted."""
+
+_Found = TypeVar("_Found")
+
+
+def once_a_run(measure: Callable[[RunSubject], _Found]) -> Callable[[RunSubject], _Found]:
+    """Return a measure that several checks share, computed once for each run and kept with it."""
+    key = f"{measure.__module__}.{measure.__qualname__}"
+
+    @wraps(measure)
+    def kept(subject: RunSubject) -> _Found:
+        if key not in subject.kept:
+            subject.kept[key] = measure(subject)
+        return cast("_Found", subject.kept[key])
+
+    return kept
 
 
 @dataclass(frozen=True)
@@ -66,6 +85,17 @@ class RunSubject:
         if self.window is not None:
             chosen = chosen & ((np.arange(len(beats)) <= self.window.last_at) | is_at_usual_rate(beats, self.window.onset_at, self.facts))
         return course(points.at(np.flatnonzero(chosen)), bent=self.facts.kind == "preload-reduction")
+
+    def with_accepted(self, accepted: BoolArray) -> RunSubject:
+        """Return this run with these beats accepted; what does not depend on them is not computed again."""
+        seen = replace(self, accepted=accepted)
+        seen.__dict__.update({name: self.__dict__[name] for name in AS_RECORDED if name in self.__dict__})
+        return seen
+
+    @cached_property
+    def kept(self) -> dict[str, Any]:
+        """Return what `once_a_run` keeps, by the name of the measure."""
+        return {}
 
     @property
     def in_window(self) -> BoolArray:
@@ -107,7 +137,14 @@ class RunSubject:
 
     @property
     def _counting(self) -> BoolArray:
-        return np.ones(len(self.known_beats()), dtype=bool) if self.accepted is None else self.accepted
+        """Return the accepted beats, of an occlusion the fullest: a ventricle that empties opens its valve ever later."""
+        beats = self.known_beats()
+        accepted = np.ones(len(beats), dtype=bool) if self.accepted is None else self.accepted
+        if self.facts.kind != "preload-reduction":
+            return accepted
+        known = beats.edv_ml[accepted & np.isfinite(beats.edv_ml)]
+        least_ml = np.sort(known)[-max(known.size // 3, min(FEWEST_POINTS + 2, known.size))] if known.size else np.nan
+        return np.asarray(accepted & (beats.edv_ml >= least_ml), dtype=bool)
 
     def mains(self, name: str) -> Mains:
         """Return how much of the mains a channel holds; raises ValueError when the run does not hold the channel."""
@@ -120,10 +157,30 @@ class RunSubject:
     def _mains(self) -> dict[str, Mains]:
         return {}
 
+    def reach(self, name: str) -> float:
+        """Return how far a recorded channel moves, in its own unit; raises ValueError when the run does not hold it."""
+        if name not in self._reach:
+            self._reach[name] = span(self.channel(name).samples)
+        return self._reach[name]
+
+    @cached_property
+    def _reach(self) -> dict[str, float]:
+        return {}
+
+    @cached_property
+    def gaps(self) -> BoolArray:
+        """Return which beats hold a missing sample, shape (n_beats,)."""
+        beats, missing_at = self.known_beats(), np.flatnonzero(self.known_signals().missing)
+        held: BoolArray = np.searchsorted(missing_at, beats.end) > np.searchsorted(missing_at, beats.start)
+        return held
+
     @property
     def at_rest(self) -> BoolArray:
-        """Return which accepted beats show the heart at rest: all of a steady run, of an occlusion those before its onset."""
-        accepted = np.zeros(0, dtype=bool) if self.accepted is None else self.accepted
+        """Return which accepted beats show the heart at rest: all of a steady run, of an occlusion those before its onset.
+
+        Every beat counts as accepted until the beat checks have spoken.
+        """
+        accepted = np.ones(0 if self.beats is None else len(self.beats), dtype=bool) if self.accepted is None else self.accepted
         if self.facts.kind == "preload-reduction":
             onset_at = 0 if self.window is None else self.window.onset_at
             return accepted & (np.arange(accepted.size) < onset_at)

@@ -101,7 +101,7 @@ def judge_run(subject: RunSubject, checks: Sequence[Check], rules: Rules) -> Run
     ruined = tuple(check.name for check in failed if check.spoils >= EVERYTHING)
     rejected_by = tuple(tuple(sorted({*names, *ruined})) for names in _rejections(on_beats, rules, count))
     accepted = np.array([not names for names in rejected_by], dtype=bool)
-    seen = RunSubject(subject.facts, subject.recording, subject.signals, subject.beats, accepted, subject.trouble)
+    seen = subject.with_accepted(accepted)
     late = [
         _judged(check, seen, rules, 1) for check in mine if check.level is Level.RUN and check.after_beats and subject.beats is not None
     ]
@@ -125,7 +125,7 @@ def doubted(run: RunVerdict, findings: Sequence[Finding]) -> RunVerdict:
     accepted = np.array([not names for names in rejected_by], dtype=bool)
     return replace(
         run,
-        subject=run.subject if not ruined else replace(run.subject, accepted=accepted),
+        subject=run.subject if not ruined else run.subject.with_accepted(accepted),
         rejected_by=rejected_by,
         findings=(*run.findings, *mine),
         doubted_by=guilty,

@@ -13,7 +13,7 @@ from functools import reduce
 
 import numpy as np
 
-from checks.check import Check
+from checks.check import Check, Verdict
 from checks.verdicts import RunVerdict, spoilers
 from metrics.arrays import BoolArray
 from metrics.indices import ALL
@@ -212,16 +212,25 @@ def _run_reason(run: RunVerdict, index: Index) -> str:
 
 
 def _steady_runs(stage: Stage, index: Index) -> tuple[tuple[RunBeats, ...], bool]:
-    """Return the steady runs that may bear an index, or the beats before the onsets where there are none."""
+    """Return the steady runs that may bear an index, or the beats before the onsets where there are none.
+
+    Where a fault took the steady runs, only runs that the same checks looked at and passed may stand in: one that such a check cannot
+    judge may have the fault too.
+    """
     steady = tuple(stage.beats(run, run.accepted) for run in stage.of_kind("steady") if _is_sound(run, index))
     if steady:
         return steady, False
+    guilty = {check.name for run in stage.of_kind("steady") for check in spoilers(index.exposed, run.failed)}
     before = []
     for run in stage.of_kind("preload-reduction"):
         window = run.subject.window
-        if _is_sound(run, index) and window is not None:
+        if _is_sound(run, index) and guilty <= _passed(run) and window is not None:
             before.append(stage.beats(run, run.accepted & (np.arange(run.accepted.size) < window.onset_at)))
     return tuple(before), bool(before)
+
+
+def _passed(run: RunVerdict) -> set[str]:
+    return {judged.check.name for judged in run.judged if judged.worst() is Verdict.PASS}
 
 
 def _preload_runs(stage: Stage, index: Index) -> tuple[RunBeats, ...]:

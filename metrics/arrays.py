@@ -38,17 +38,34 @@ def argmax_within(values: FloatArray, start: IntArray, stop: IntArray) -> IntArr
     [1, 3, -1]
     """
     positions, owner = spans(start, stop)
-    found = np.full(start.size, -1, dtype=np.int64)
-    if positions.size == 0:
+    at = argmax_by_owner(values[positions], owner, start.size)
+    return np.where(at >= 0, positions[np.maximum(at, 0)], -1) if positions.size else at
+
+
+def argmax_by_owner(values: FloatArray, owner: IntArray, count: int) -> IntArray:
+    """Return where the values of each owner are largest, the first such place; shape (count,), -1 for an owner without any.
+
+    ``owner`` has the shape of ``values`` and ascends. NaN counts as smaller than anything.
+
+    >>> argmax_by_owner(np.array([0.0, 3.0, 1.0, 5.0]), np.array([0, 0, 2, 2]), 3).tolist()
+    [1, -1, 3]
+    """
+    found = np.full(count, -1, dtype=np.int64)
+    if values.size == 0:
         return found
-    inside = np.nan_to_num(values[positions], nan=-np.inf)
-    filled, first = np.unique(owner, return_index=True)
-    peak = np.full(start.size, -np.inf)
-    peak[filled] = np.maximum.reduceat(inside, first)
-    hits = np.flatnonzero(inside == peak[owner])
-    hit_owner, hit_first = np.unique(owner[hits], return_index=True)
-    found[hit_owner] = positions[hits[hit_first]]
+    known = np.nan_to_num(values, nan=-np.inf)  # minus infinity becomes the least finite number, and so stays above missing
+    first = _firsts(owner)
+    filled = owner[first]
+    peak = np.full(count, -np.inf)
+    peak[filled] = np.maximum.reduceat(known, first)
+    hits = np.flatnonzero(known == peak[owner])
+    found[filled] = hits[_firsts(owner[hits])]
     return found
+
+
+def _firsts(owner: IntArray) -> IntArray:
+    """Return where each new value begins in an array that ascends."""
+    return np.flatnonzero(np.concatenate([[True], owner[1:] != owner[:-1]]))
 
 
 def argmin_within(values: FloatArray, start: IntArray, stop: IntArray) -> IntArray:
@@ -117,14 +134,24 @@ def robust_sd(values: FloatArray) -> float:
     return float(1.4826 * np.median(np.abs(finite - np.median(finite))))
 
 
+def median_of_known(values: FloatArray) -> float:
+    """Return the median of the values that are numbers, NaN without any.
+
+    >>> median_of_known(np.array([1.0, np.nan, 4.0])), median_of_known(np.empty(0))
+    (2.5, nan)
+    """
+    known = values[np.isfinite(values)]
+    return float(np.median(known)) if known.size else float("nan")
+
+
 def smallest_step(values: FloatArray) -> float:
     """Return the smallest difference between two of the values, 0 where all are alike: the step of the converter that wrote them.
 
     >>> smallest_step(np.array([0.5, 2.0, np.nan, 1.5, 2.0]))
     0.5
     """
-    levels = np.unique(values[np.isfinite(values)])
-    return float(np.min(np.diff(levels))) if levels.size > 1 else 0.0
+    apart = np.diff(np.sort(values[np.isfinite(values)]))
+    return float(np.min(apart, where=apart > 0.0, initial=np.inf)) if apart.any() else 0.0
 
 
 def span(samples: FloatArray) -> float:

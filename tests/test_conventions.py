@@ -39,6 +39,9 @@ IN_UCUM = (
 UCUM = frozenset(IN_UCUM.split(", "))
 FAMILIES = {
     "post-premature": "cycle_length",
+    "pressure-late": "damping",
+    "edp-steadiness": "steadiness",
+    "work-steadiness": "steadiness",
     "pressure-units": "units",
     "volume-units": "units",
     "swapped-channels": "wiring",

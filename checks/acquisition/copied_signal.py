@@ -102,6 +102,8 @@ def _exact_shifts(one: FloatArray, other: FloatArray) -> set[int]:
         piece = other[start : start + PROBE_SAMPLES]
         places = np.flatnonzero(one[: max(one.size - PROBE_SAMPLES, 0)] == piece[0])
         for offset, value in enumerate(piece.tolist()):
+            if places.size == 0:
+                break
             places = places[one[places + offset] == value]
         if places.size == 1:
             shifts.add(int(places[0]) - start)

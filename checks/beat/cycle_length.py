@@ -11,7 +11,7 @@ import numpy as np
 
 from checks.check import Check, Level, Limits, Measured
 from checks.subject import RunSubject
-from metrics.arrays import BoolArray, FloatArray, median_before, running_median
+from metrics.arrays import BoolArray, FloatArray, median_before, median_of_known, running_median
 
 NEIGHBOURS = 8
 PAUSE = 1.20
@@ -30,7 +30,7 @@ def preceding_ratio(rr_s: FloatArray) -> FloatArray:
     if rr_s.size == 0:
         return np.empty(0)
     usual = median_before(rr_s, NEIGHBOURS)
-    usual[:3] = np.nanmedian(rr_s)
+    usual[:3] = median_of_known(rr_s)
     ratio = rr_s / usual
     return np.concatenate([[np.nan], ratio[:-1]])
 
@@ -41,7 +41,7 @@ def has_second_sign(subject: RunSubject) -> BoolArray:
     if subject.facts.rhythm == "atrial-fibrillation" or len(beats) == 0:
         return np.zeros(len(beats), dtype=bool)
     usual = median_before(beats.rr_s, NEIGHBOURS)
-    usual[:3] = np.nanmedian(beats.rr_s)
+    usual[:3] = median_of_known(beats.rr_s)
     # a short beat lowers its own reference; the interval before the premature one is the honest one
     pause = beats.rr_s / np.concatenate([usual[:1], usual[:-1]]) > PAUSE
     weak = beats.dpdt_max_mmhg_per_s < WEAK_DPDT * running_median(beats.dpdt_max_mmhg_per_s, 2 * NEIGHBOURS + 1)

@@ -14,7 +14,7 @@ from checks.subject import RunSubject
 def longest_gap(subject: RunSubject) -> Measured:
     """Return the longest stretch of missing samples touching each beat, in seconds, and when it begins; shape (n_beats,)."""
     beats, signals = subject.known_beats(), subject.known_signals()
-    edges = np.flatnonzero(np.diff(np.concatenate([[0], signals.missing.astype(np.int8), [0]])))
+    edges = np.flatnonzero(np.diff(signals.missing, prepend=False, append=False))
     first, stop = edges[::2], edges[1::2]
     longest_s, at_s = np.zeros(len(beats)), np.full(len(beats), np.nan)
     # a gap is counted once in every beat it touches: from the beat of its first sample to that of its last

@@ -15,7 +15,7 @@ import numpy as np
 from checks.check import Check, Level, Limits, Measured
 from checks.run.noise import responses
 from checks.subject import RunSubject
-from metrics.arrays import FloatArray
+from metrics.arrays import FloatArray, median_of_known
 
 WINDOW_S = 0.030
 LEAST_WINDOW = 6
@@ -45,10 +45,15 @@ def shaking(samples: FloatArray, sampling_rate_hz: float) -> FloatArray:
     found = np.zeros(samples.size)
     if samples.size < 2 * width + GAP + 3:
         return found
-    summed = np.concatenate([[0.0], np.cumsum(np.nan_to_num(np.abs(np.diff(samples, 3))))])
-    mean = (summed[width:] - summed[:-width]) / (width * PER_SD)
-    quieter = np.minimum(mean[: -width - GAP], mean[width + GAP :])
-    found[: quieter.size] = quieter
+    sizes = np.diff(samples, 3)
+    np.abs(sizes, out=sizes)
+    sizes[np.isnan(sizes)] = 0.0
+    summed = np.zeros(sizes.size + 1)
+    np.cumsum(sizes, out=summed[1:])
+    inside = summed[width:] - summed[:-width]
+    quieter = found[: inside.size - width - GAP]
+    np.minimum(inside[: -width - GAP], inside[width + GAP :], out=quieter)
+    quieter /= width * PER_SD
     return found
 
 
@@ -60,12 +65,14 @@ def bursts(subject: RunSubject) -> Measured:
     length = 2 * max(LEAST_WINDOW, round(WINDOW_S * rate_hz)) + GAP + round(REACH_S * rate_hz)
     first = np.maximum(np.searchsorted(at, beats.start) - length, 0)
     stop = np.minimum(np.searchsorted(at, beats.end) + round(REACH_S * rate_hz), loud.size)
-    loudest = np.array([loud[one:other].max(initial=0.0) for one, other in zip(first, stop, strict=True)])
+    # every second stretch lies between two beats' own, and is of no interest
+    edges = np.minimum(np.column_stack([first, np.maximum(stop, first + 1)]).ravel(), loud.size)
+    loudest = np.maximum.reduceat(np.append(loud, 0.0), edges)[::2] if edges.size else np.empty(0)
     quiet = float(np.percentile(loudest, QUIET_PERCENT)) if loudest.size else 0.0
     steep = responses(signals.sampling_rate_hz, subject.facts.chamber)[2]
     moved = np.ptp(channel.samples[np.isfinite(channel.samples)])
     scale = np.ptp(signals.pressure_mmhg) / moved if moved > 0.0 else np.nan
-    share = loudest * scale * steep / abs(float(np.nanmedian(beats.dpdt_max_mmhg_per_s)))
+    share = loudest * scale * steep / abs(median_of_known(beats.dpdt_max_mmhg_per_s))
     return Measured(np.where(loudest > STANDS_OUT * quiet, share, np.where(np.isfinite(share), 0.0, np.nan)))
 
 
@@ -75,9 +82,7 @@ CHECK = Check(
     level=Level.BEAT,
     measure=bursts,
     unit="1",
-    limits=Limits(
-        fail_above=0.20, basis="the largest of noisy slopes lies about 1 SD above the largest: 20 % in one beat (computed)"
-    ),
+    limits=Limits(fail_above=0.20, basis="the largest of noisy slopes lies about 1 SD above the largest: 20 % in one beat (computed)"),
     reason="a burst of noise shakes the pressure, by {value:.0%} of dP/dt maximum (limit {limit:.0%})",
     remedy="none for the beat; look for a loose connector or diathermy",
 )

@@ -12,17 +12,9 @@ import numpy as np
 from checks.check import Check, Level, Limits, Measured, single
 from checks.spoils import EVERYTHING
 from checks.subject import RunSubject
-from metrics.arrays import BoolArray
 
 LEAST_BEATS = 5
 """As many as a breath holds at rest: the fewest whose median stands for a heart that breathes; house default."""
-
-
-def holds_gap(subject: RunSubject) -> BoolArray:
-    """Return which beats hold a missing sample, shape (n_beats,)."""
-    beats, lost = subject.known_beats(), np.concatenate([[0], np.cumsum(subject.known_signals().missing)])
-    gaps: BoolArray = lost[beats.end] > lost[beats.start]
-    return gaps
 
 
 def accepted_share(subject: RunSubject) -> Measured:
@@ -33,7 +25,7 @@ def accepted_share(subject: RunSubject) -> Measured:
     if subject.accepted is None or subject.accepted.size == 0:
         return single(np.nan)
     held = [subject.longest_standing(name)[0] > 0.0 for name in ("pressure", "volume")]
-    counts = subject.accepted | ~(holds_gap(subject) | held[0] | held[1])
+    counts = subject.accepted | ~(subject.gaps | held[0] | held[1])
     return single(float(np.mean(subject.accepted[counts])) if counts.any() else np.nan)
 
 

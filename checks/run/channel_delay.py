@@ -13,10 +13,17 @@ from __future__ import annotations
 from checks.check import Check, Level, Limits, Measured, single
 from checks.spoils import DELAY, VOLUME_LATE
 from checks.subject import REGURGITATION, RunSubject
+from metrics.arrays import median_of_known
 
-USUAL_S = {"LV": 0.003, "RV": -0.012}
+USUAL_S = {"LV": 0.003, "RV": -0.010}
 """How long after dP/dt maximum ejection begins: in a sound left ventricle 0-10 ms (from memory; -4 to 7 ms on simulated hearts with
-activation, relaxation, inertance and resistance varied by half and more), in the right one -25 to -2 ms on simulated hearts."""
+activation, relaxation, inertance and resistance varied by half and more), in the right one at `USUAL_CYCLE_S`."""
+
+USUAL_CYCLE_S = 0.8
+EARLIER_BY_CYCLE = {"LV": 0.01, "RV": 0.04}
+"""The longer the diastole, the lower the pressure an artery has fallen to and the earlier its valve opens (windkessel). The right
+ventricle hardly exceeds that pressure, so that there each second of cycle length makes 40 ms (computed: 0 ms at 120 a minute, -20 at 55,
+hearts apart from each other by 10 to either side)."""
 
 REMEDY = "send the conditioner's delay of each channel in delay_ms, or record both through the same filter"
 
@@ -25,7 +32,9 @@ def volume_late_ms(subject: RunSubject) -> float:
     """Return by how much volume comes later than usual after pressure, ms, below 0 where pressure is late; NaN with regurgitation."""
     if subject.facts.conditions & REGURGITATION:
         return float("nan")
-    return 1000.0 * (subject.volume_delay_s - USUAL_S[subject.facts.chamber])
+    chamber = subject.facts.chamber
+    longer_s = median_of_known(subject.known_beats().rr_s) - USUAL_CYCLE_S
+    return 1000.0 * (subject.volume_delay_s - USUAL_S[chamber] + EARLIER_BY_CYCLE[chamber] * longer_s)
 
 
 def apart_ms(subject: RunSubject) -> Measured:
@@ -44,9 +53,11 @@ CHECK = Check(
     level=Level.RUN,
     measure=apart_ms,
     unit="ms",
-    limits=Limits(suspect_above=10.0, fail_above=15.0, basis="20 ms move Ees by 5 % (computed); valves open within 10 ms (from memory)"),
+    limits=Limits(suspect_above=12.0, fail_above=20.0, basis="20 ms move Ees by 5 % (computed); valves open within 10 ms (from memory)"),
     limits_rv=Limits(
-        suspect_above=15.0, fail_above=20.0, basis="the onset of ejection may stand 15 ms to either side in health; house default"
+        suspect_above=20.0,
+        fail_above=25.0,
+        basis="a stiff right ventricle fills to near its artery's pressure and ejects as it begins to contract, 20 ms early (computed)",
     ),
     reason="volume and pressure are {value:.0f} ms apart beyond the declared delay (limit {limit:g} ms)",
     remedy=REMEDY,

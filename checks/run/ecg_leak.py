@@ -16,8 +16,8 @@ import numpy as np
 from checks.check import Check, Level, Limits, Measured, single
 from checks.run.noise import responses
 from checks.spoils import ECG_LEAK, VOLUME_SHAPE
-from checks.subject import RunSubject
-from metrics.arrays import FloatArray, IntArray
+from checks.subject import RunSubject, once_a_run
+from metrics.arrays import FloatArray, IntArray, median_of_known
 from metrics.signals.filters import zero_phase
 
 AVERAGED_S = 0.300
@@ -60,6 +60,7 @@ def leak(volume_ml: FloatArray, lead_mv: FloatArray, half: int, lags: IntArray, 
     return found if likeness[best] >= LEAST_LIKENESS and abs(found) > MOST_BY_CHANCE * by_chance else 0.0
 
 
+@once_a_run
 def leak_share(subject: RunSubject) -> Measured:
     """Return what leaks into volume at the height of the R wave over stroke volume, shape (); NaN without five R waves.
 
@@ -77,7 +78,7 @@ def leak_share(subject: RunSubject) -> Measured:
     noise_ml = OF_MEDIAN * signals.volume_noise_ml * responses(rate_hz, subject.facts.chamber)[0] / math.sqrt(r_at.size)
     ml_per_mv = leak(volume_ml, lead_mv, half, np.unique(np.rint(LAGS_S * rate_hz)).astype(np.int64), noise_ml)
     height_mv = float(np.max(np.abs(lead_mv - np.median(lead_mv))))
-    stroke_ml = abs(float(np.nanmedian(beats.sv_ml))) if np.isfinite(beats.sv_ml).any() else float("nan")
+    stroke_ml = abs(median_of_known(beats.sv_ml))
     return single(abs(ml_per_mv) * height_mv / stroke_ml, float(r_at[0]) / rate_hz)
 
 

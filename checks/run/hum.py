@@ -8,12 +8,10 @@ the slope of end-systolic points average over it.
 
 from __future__ import annotations
 
-import numpy as np
-
 from checks.check import Check, Level, Limits, Measured, single
 from checks.spoils import END_DIASTOLE, END_SYSTOLE, PEAK, STEEPEST, VOLUME_SHAPE
 from checks.subject import RunSubject
-from metrics.arrays import span
+from metrics.arrays import median_of_known
 
 
 def pressure_hum(subject: RunSubject) -> Measured:
@@ -29,8 +27,8 @@ def end_systolic_hum(subject: RunSubject) -> Measured:
 def dpdt_hum(subject: RunSubject) -> Measured:
     """Return the amplitude of the mains in dP/dt over its median maximum, shape ()."""
     most = subject.known_beats().dpdt_max_mmhg_per_s
-    reach_mmhg = span(subject.known_signals().pressure_mmhg)
-    return single(subject.mains("pressure").slope * reach_mmhg / abs(float(np.nanmedian(most))) if np.isfinite(most).any() else np.nan)
+    reach_mmhg = subject.known_signals().pressure_reach_mmhg
+    return single(subject.mains("pressure").slope * reach_mmhg / abs(median_of_known(most)))
 
 
 def volume_hum(subject: RunSubject) -> Measured:
@@ -47,9 +45,9 @@ DIASTOLE = Check(
     measure=pressure_hum,
     unit="1",
     limits=Limits(
-        suspect_above=0.01,
-        fail_above=0.02,
-        basis="end-diastole is found by a threshold of dP/dt, so its pressure moves by the amplitude: 2 % of the pulse is a quarter of EDP",
+        suspect_above=0.004,
+        fail_above=0.008,
+        basis="end-diastole is found by a threshold of dP/dt, so its pressure moves by the amplitude: 0.8 % of the pulse is a tenth of EDP",
     ),
     reason="mains hum of {value:.1%} of the pulse is left in the filtered pressure and steers end-diastole (limit {limit:.1%})",
     remedy=REMEDY,

@@ -13,9 +13,8 @@ import functools
 import numpy as np
 
 from checks.check import Check, Level, Limits, Measured, single
-from checks.spoils import INTERCEPTS, PRESSURE_EXTREMES, STEEPEST, VOLUME_END_SYSTOLE
-from checks.subject import RunSubject
-from metrics.arrays import span
+from checks.spoils import END_DIASTOLE, INTERCEPTS, PRESSURE_EXTREMES, STEEPEST, VOLUME_END_SYSTOLE, WORK_SLOPES
+from checks.subject import RunSubject, once_a_run
 from metrics.signals.filters import slope_per_s, steadied, zero_phase
 from metrics.signals.mains import Mains
 
@@ -49,10 +48,11 @@ def without_hum(taken_away: float, found: Mains, reach: float) -> float:
     return float(np.sqrt(square)) if square > LEAST_LEFT * taken_away**2 else 0.0
 
 
+@once_a_run
 def pressure_noise(subject: RunSubject) -> tuple[float, float]:
     """Return the SD of the noise in filtered pressure over what pressure moves by, and in dP/dt over its median maximum."""
     signals, beats = subject.known_signals(), subject.known_beats()
-    reach_mmhg = span(signals.pressure_mmhg)
+    reach_mmhg = signals.pressure_reach_mmhg
     taken_mmhg = without_hum(signals.pressure_noise_mmhg, subject.mains("pressure"), reach_mmhg)
     left, _, steep = responses(signals.sampling_rate_hz, subject.facts.chamber)
     most = beats.dpdt_max_mmhg_per_s[np.isfinite(beats.dpdt_max_mmhg_per_s)]
@@ -72,7 +72,7 @@ def noise_of_slope(subject: RunSubject) -> Measured:
 def noise_of_volume(subject: RunSubject) -> Measured:
     """Return the SD of noise in a volume read at a landmark over what volume moves by, shape ()."""
     signals = subject.known_signals()
-    reach_ml = span(signals.volume_ml)
+    reach_ml = signals.volume_reach_ml
     taken_ml = without_hum(signals.volume_noise_ml, subject.mains("volume"), reach_ml)
     return single(taken_ml * responses(signals.sampling_rate_hz, subject.facts.chamber)[1] / reach_ml)
 
@@ -88,7 +88,7 @@ PRESSURE = Check(
     ),
     reason="noise has an SD of {value:.1%} of the pulse in the filtered pressure (limit {limit:.0%})",
     remedy="look for a loose connector, air in a line, or an amplifier's gain set too low",
-    spoils=PRESSURE_EXTREMES,
+    spoils=PRESSURE_EXTREMES | WORK_SLOPES,
 )
 SLOPE = Check(
     name="dpdt-noise",
@@ -104,7 +104,7 @@ SLOPE = Check(
     ),
     reason="noise has an SD of {value:.1%} of the largest dP/dt (limit {limit:.0%})",
     remedy="look for a loose connector, or record with a finer converter",
-    spoils=STEEPEST,
+    spoils=STEEPEST | END_DIASTOLE,
 )
 VOLUME = Check(
     name="volume-noise",

@@ -14,7 +14,7 @@ import numpy as np
 from checks.check import Check, Level, Limits, Measured, single
 from checks.spoils import END_DIASTOLE, END_SYSTOLE, PEAK, STEEPEST, VOLUME_SHAPE
 from checks.subject import RunSubject
-from metrics.arrays import FloatArray, span
+from metrics.arrays import FloatArray
 
 MOST_SAMPLES = 30_000
 """A converter shows its step in any half a minute."""
@@ -32,24 +32,24 @@ def converter_step(samples: FloatArray) -> float:
     return float(steps.min()) if steps.size else float("nan")
 
 
-def step_share(samples: FloatArray) -> float:
+def step_share(subject: RunSubject, name: str) -> float:
     """Return the converter's step over what the channel moves by; NaN for a channel that stands still."""
-    return converter_step(samples) / span(samples)
+    return converter_step(subject.channel(name).samples) / subject.reach(name)
 
 
 def rounding_of_pressure(subject: RunSubject) -> Measured:
     """Return the SD of rounding over what pressure moves by, shape ()."""
-    return single(step_share(subject.channel("pressure").samples) / math.sqrt(12.0))
+    return single(step_share(subject, "pressure") / math.sqrt(12.0))
 
 
 def step_of_pressure(subject: RunSubject) -> Measured:
     """Return the converter's step in mmHg of calibrated pressure, shape ()."""
-    return single(step_share(subject.channel("pressure").samples) * span(subject.known_signals().pressure_mmhg))
+    return single(step_share(subject, "pressure") * subject.known_signals().pressure_reach_mmhg)
 
 
 def rounding_of_volume(subject: RunSubject) -> Measured:
     """Return the SD of rounding over what volume moves by, shape ()."""
-    return single(step_share(subject.channel("volume").samples) / math.sqrt(12.0))
+    return single(step_share(subject, "volume") / math.sqrt(12.0))
 
 
 DIASTOLE = Check(

@@ -11,6 +11,7 @@ memory). How slow the swing is cannot be told either, so what lines of 8 Hz reac
 
 from __future__ import annotations
 
+import functools
 import math
 
 import numpy as np
@@ -20,7 +21,7 @@ from checks.run.hum import dpdt_hum
 from checks.run.quantisation import step_share
 from checks.spoils import PRESSURE_EXTREMES, STEEPEST
 from checks.subject import RunSubject
-from metrics.arrays import FloatArray, span
+from metrics.arrays import FloatArray
 from metrics.signals.mains import MAINS_HZ, shown_at_hz
 
 AFTER_S = (0.050, 0.250)
@@ -49,13 +50,20 @@ def common_swing(pieces: FloatArray, sampling_rate_hz: float) -> float:
     0.7
     """
     count, length = pieces.shape
+    shapes, taking = _expected_shapes(length, sampling_rate_hz)
+    left = pieces - (pieces @ taking) @ shapes.T
+    noise, common = float(np.mean(np.var(left, axis=0, ddof=1))) / count, float(np.mean(np.mean(left, axis=0) ** 2))
+    return float(np.sqrt(common - noise)) if common > STANDS_OUT * noise else 0.0
+
+
+@functools.lru_cache(maxsize=16)
+def _expected_shapes(length: int, sampling_rate_hz: float) -> tuple[FloatArray, FloatArray]:
+    """Return the polynomials and the mains, and what takes their amounts out of a piece; both of shape (length, n_shapes)."""
     slow = np.polynomial.legendre.legvander(np.linspace(-1.0, 1.0, length), DEGREE)
     shown_hz = [hz for hz in (shown_at_hz(mains_hz, sampling_rate_hz) for mains_hz in MAINS_HZ) if np.isfinite(hz)]
     turn = 2.0 * np.pi * np.outer(np.arange(length) / sampling_rate_hz, shown_hz)
     shapes = np.hstack([slow, np.sin(turn), np.cos(turn)])
-    left = pieces - (pieces @ np.linalg.pinv(shapes).T) @ shapes.T
-    noise, common = float(np.mean(np.var(left, axis=0, ddof=1))) / count, float(np.mean(np.mean(left, axis=0) ** 2))
-    return float(np.sqrt(common - noise)) if common > STANDS_OUT * noise else 0.0
+    return shapes, np.linalg.pinv(shapes).T
 
 
 def swing_in_diastole(subject: RunSubject) -> Measured:
@@ -71,9 +79,8 @@ def swing_in_diastole(subject: RunSubject) -> Measured:
     if last - first < SHORTEST_S * rate_hz or chosen.size < BEATS[0]:
         return single(np.nan)
     pieces = signals.pressure_mmhg[chosen[:, None] + np.arange(first, last)]
-    reach_mmhg = span(signals.pressure_mmhg)
-    rounding = np.nan_to_num(step_share(subject.channel("pressure").samples)) / math.sqrt(12.0)
-    swing = math.sqrt(max((common_swing(pieces, rate_hz) / reach_mmhg) ** 2 - float(rounding) ** 2, 0.0))
+    rounding = np.nan_to_num(step_share(subject, "pressure")) / math.sqrt(12.0)
+    swing = math.sqrt(max((common_swing(pieces, rate_hz) / signals.pressure_reach_mmhg) ** 2 - float(rounding) ** 2, 0.0))
     return single(swing, float(chosen[0]) / rate_hz)
 
 
@@ -88,7 +95,7 @@ CHECK = Check(
         fail_above=0.002,
         basis="0.25 mmHg of 125 comes back in every beat; a sound decay leaves nothing, rounding is taken off (computed)",
     ),
-    reason="pressure swings after relaxation by {value:.2%} of the pulse in all beats alike (limit {limit:.1%}), as in a fluid-filled line",
+    reason="pressure swings after relaxation by {value:.2%} of the pulse in all beats alike (limit {limit:.2%}), as in a fluid-filled line",
     remedy="confirm the kind of the pressure sensor; flush the line and look for air, or use a tip manometer",
     spoils=STEEPEST | PRESSURE_EXTREMES,
 )

@@ -13,7 +13,7 @@ import numpy as np
 
 from checks.check import Check, Level, Limits, Measured, single
 from checks.spoils import VOLUME_SHAPE
-from checks.subject import RunSubject
+from checks.subject import RunSubject, once_a_run
 from metrics.arrays import FloatArray
 
 SAMPLES_PER_S = 25.0
@@ -45,6 +45,7 @@ def least_swing(subject: RunSubject) -> Measured:
     return Measured(np.array(share[least]), corroborated=np.array(least == len(samples) - 1))
 
 
+@once_a_run
 def _segments(subject: RunSubject) -> FloatArray | None:
     """Return the segments in use, thinned, shape (n_segments, n); None without two, or where a volume channel stands in their place."""
     if subject.recording is None or "volume" in subject.recording.channels:

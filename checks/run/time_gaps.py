@@ -9,7 +9,7 @@ from __future__ import annotations
 import numpy as np
 
 from checks.check import Check, Level, Limits, Measured
-from checks.run.beats_accepted import LEAST_BEATS, holds_gap
+from checks.run.beats_accepted import LEAST_BEATS
 from checks.spoils import EVERYTHING
 from checks.subject import RunSubject
 
@@ -18,7 +18,7 @@ def missing_share(subject: RunSubject) -> Measured:
     """Return the share of missing samples, and when the first stretch begins; shape (). Borne out where too few whole beats are left."""
     signals = subject.known_signals()
     at_s = float(np.argmax(signals.missing)) / signals.sampling_rate_hz if signals.missing.any() else np.nan
-    left = int(np.sum(~holds_gap(subject)))
+    left = int(np.sum(~subject.gaps))
     return Measured(np.array(signals.missing.mean()), np.array(at_s), np.array(left < LEAST_BEATS))
 
 

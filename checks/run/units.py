@@ -9,19 +9,18 @@ A channel that does not move at all is not evaluated; that is another check's.
 from __future__ import annotations
 
 from checks.check import Check, Level, Limits, Measured, single
-from checks.spoils import PRESSURE_GAIN, PRESSURE_OFFSET, VOLUME_GAIN, VOLUME_OFFSET
+from checks.spoils import PRESSURE_GAIN, PRESSURE_OFFSET, VOLUME_SHAPE
 from checks.subject import RunSubject
-from metrics.arrays import span
 
 
 def pressure_span(subject: RunSubject) -> Measured:
     """Return how far the calibrated pressure moves over the run, mmHg, shape ()."""
-    return single(span(subject.known_signals().pressure_mmhg))
+    return single(subject.known_signals().pressure_reach_mmhg)
 
 
 def volume_span(subject: RunSubject) -> Measured:
     """Return how far the calibrated volume moves over the run, mL, shape ()."""
-    return single(span(subject.known_signals().volume_ml))
+    return single(subject.known_signals().volume_reach_ml)
 
 
 PRESSURE = Check(
@@ -59,5 +58,5 @@ VOLUME = Check(
     ),
     reason="volume moves by {value:.3g} mL over the run, as if it were sent in another unit (limit {limit:g} mL)",
     remedy="confirm the unit of the volume channel (L, mL or uL) and send the package again",
-    spoils=VOLUME_GAIN | VOLUME_OFFSET,
+    spoils=VOLUME_SHAPE,
 )

@@ -11,7 +11,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from metrics.arrays import BoolArray, FloatArray, IntArray, argmax_within, taken
+from metrics.arrays import BoolArray, FloatArray, IntArray, argmax_by_owner, spans, taken
 from metrics.signals.beats import Beats
 from metrics.signals.calibrate import Signals
 from metrics.stats.lines import Line, LineFit, deming_fit
@@ -41,12 +41,15 @@ def end_systole(signals: Signals, beats: Beats, v0_ml: float | None) -> EndSysto
     inside = (beats.dpdt_max_at >= 0) & (beats.dpdt_min_at >= 0)
     start = np.where(inside, beats.dpdt_max_at, 0)
     stop = np.where(inside, beats.dpdt_min_at + 1, 0)
-    at = argmax_within(pressure_mmhg / np.maximum(volume_ml, 1e-6), start, stop)
+    positions, owner = spans(start, stop)
+    pressures_mmhg, volumes_ml = pressure_mmhg[positions], volume_ml[positions]
+    within = argmax_by_owner(pressures_mmhg / np.maximum(volumes_ml, 1e-6), owner, len(beats))
     if v0_ml is not None:
-        above_ml = volume_ml - v0_ml
+        above_ml = volumes_ml - v0_ml
         possible = beats.esv_ml - v0_ml > 0.02 * np.abs(beats.edv_ml)
-        iterated = argmax_within(pressure_mmhg / np.where(above_ml > 0.0, above_ml, np.inf), start, stop)
-        at = np.where(possible, iterated, at)
+        iterated = argmax_by_owner(pressures_mmhg / np.where(above_ml > 0.0, above_ml, np.inf), owner, len(beats))
+        within = np.where(possible, iterated, within)
+    at = np.where(within >= 0, positions[np.maximum(within, 0)], -1) if positions.size else within
     return EndSystole(at, taken(pressure_mmhg, at), taken(volume_ml, at), v0_ml)
 
 

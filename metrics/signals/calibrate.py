@@ -12,7 +12,7 @@ from functools import cached_property
 
 import numpy as np
 
-from metrics.arrays import BoolArray, FloatArray, IntArray, robust_sd
+from metrics.arrays import BoolArray, FloatArray, IntArray, robust_sd, span
 from metrics.signals.facts import PressureCalibration, RunFacts, VolumeCalibration
 from metrics.signals.filters import slope_per_s, steadied, zero_phase
 from metrics.signals.recording import Channel, Recording
@@ -44,6 +44,16 @@ class Signals:
     def time_s(self) -> FloatArray:
         """Return seconds from the run's first sample, shape (n,)."""
         return np.arange(self.pressure_mmhg.size) / self.sampling_rate_hz
+
+    @cached_property
+    def pressure_reach_mmhg(self) -> float:
+        """Return what pressure moves by (`metrics.arrays.span`)."""
+        return span(self.pressure_mmhg)
+
+    @cached_property
+    def volume_reach_ml(self) -> float:
+        """Return what volume moves by (`metrics.arrays.span`)."""
+        return span(self.volume_ml)
 
     @cached_property
     def steadied_pressure_mmhg(self) -> FloatArray:

@@ -6,6 +6,8 @@ simulated heart), so every channel passes the same filter, forwards and backward
 
 from __future__ import annotations
 
+import functools
+
 import numpy as np
 from scipy import signal
 
@@ -32,9 +34,13 @@ def zero_phase(samples: FloatArray, sampling_rate_hz: float) -> FloatArray:
     """
     if sampling_rate_hz < 3.0 * CUTOFF_HZ or samples.size < 32:
         return samples.copy()
-    sections = signal.butter(2, CUTOFF_HZ, fs=sampling_rate_hz, output="sos")
-    filtered: FloatArray = signal.sosfiltfilt(sections, samples)
+    filtered: FloatArray = signal.sosfiltfilt(_sections(sampling_rate_hz), samples)
     return filtered
+
+
+@functools.lru_cache(maxsize=16)
+def _sections(sampling_rate_hz: float) -> FloatArray:
+    return np.asarray(signal.butter(2, CUTOFF_HZ, fs=sampling_rate_hz, output="sos"), dtype=np.float64)
 
 
 def slope_per_s(samples: FloatArray, sampling_rate_hz: float, chamber: str = "LV", *, window_s: float = SLOPE_WINDOW_S) -> FloatArray:

@@ -2,8 +2,9 @@
 
 Beats before the onset repeat one load, the deflation runs back up another path, and once heart rate answers the baroreflex changes
 contractility. The answer is told where heart rate, on a median of 5 beats so that one premature beat does not end the window, leaves its
-value before the occlusion by 5 % (5 to 10 % are customary, from memory), in a rhythm that varies by itself by up to 10 %; contractility
-has risen as long as heart rate has, so the window ends where the departure began. In declared atrial fibrillation there is no reflex cut.
+value before the occlusion by 5 % (5 to 10 % are customary, from memory), or by four times what it varies by itself, and does not come
+back as a breath's swing does; contractility has risen as long as heart rate has, so the window ends where the departure began. A rhythm
+that varies as much as a reflex would change it tells of none, as declared atrial fibrillation does not.
 No limit on the length.
 """
 
@@ -18,11 +19,14 @@ from metrics.signals.beats import Beats
 from metrics.signals.facts import RunFacts
 
 MEDIAN_BEATS = 5
-REFLEX_SHARES = (0.05, 0.10)
-"""The least and the most by which heart rate must change to be a reflex: the edges of what is customary (from memory)."""
+REFLEX_SHARE = 0.05
+"""The least by which heart rate must change to be a reflex: 5 to 10 % are customary (from memory)."""
 
 OWN_VARIATIONS = 4.0
-"""Between these edges, how many standard deviations of the change from beat to beat: neighbours go together, so it must be many."""
+"""How many standard deviations of the change from beat to beat: neighbours go together, so it must be many."""
+
+STAYS_SHARE = 0.5
+"""A reflex lasts as long as the load is low: heart rate stays beyond half of what told it until the window ends; house default."""
 
 BEGUN_SHARE = 0.025
 """In a calm rhythm a departure that tells a reflex has begun where it came half way, else where it is told; house default."""
@@ -55,8 +59,8 @@ def preload_window(beats: Beats, facts: RunFacts, sampling_rate_hz: float) -> Pr
     load_ml = _bridged(running_median(beats.edv_ml, MEDIAN_BEATS))
     onset, nadir, found_by = _onset_and_nadir(beats, load_ml, _event_samples(facts, "occlusion-on", sampling_rate_hz))
     last, ended_by = _deflated(beats, _event_samples(facts, "occlusion-off", sampling_rate_hz), onset, nadir)
-    reflex = _first_reflex_beat(beats, onset, facts)
-    if reflex is not None and reflex <= last:
+    reflex = _first_reflex_beat(beats, onset, last, facts)
+    if reflex is not None:
         last, ended_by = max(reflex - 1, onset), "reflex"
     position = np.arange(len(beats))
     return PreloadWindow((position >= onset) & (position <= last), onset, last, ended_by, found_by)
@@ -109,23 +113,26 @@ def is_at_usual_rate(beats: Beats, onset: int, facts: RunFacts) -> BoolArray:
 def _rate_change(beats: Beats, onset: int, facts: RunFacts) -> tuple[FloatArray, float, float]:
     """Return by how much of it heart rate is above that before the onset, shape (n_beats,), and what tells a reflex, and its beginning."""
     if facts.rhythm == "atrial-fibrillation":
-        return np.zeros(len(beats)), *REFLEX_SHARES
+        return np.zeros(len(beats)), REFLEX_SHARE, BEGUN_SHARE
     before = beats.rr_s[max(0, onset - 2 * MEDIAN_BEATS) : onset + 1]
     usual_s = float(np.nanmedian(before)) if np.isfinite(before).any() else float("nan")
     steps = np.diff(beats.rr_s)
     # white variation doubles its variance in differences, and a trend leaves them
     own = robust_sd(steps[np.isfinite(steps)]) / float(np.sqrt(2.0)) / usual_s if np.isfinite(steps).any() else 0.0
-    told = float(np.clip(OWN_VARIATIONS * own, *REFLEX_SHARES))
-    begun = told if told > REFLEX_SHARES[0] else BEGUN_SHARE
+    told = max(OWN_VARIATIONS * own, REFLEX_SHARE)
+    begun = told if told > REFLEX_SHARE else BEGUN_SHARE
     return usual_s / running_median(beats.rr_s, MEDIAN_BEATS) - 1.0, told, begun
 
 
-def _first_reflex_beat(beats: Beats, onset: int, facts: RunFacts) -> int | None:
-    """Return the beat at which heart rate begins to leave the band around its value before the onset, None where that cannot be told."""
+def _first_reflex_beat(beats: Beats, onset: int, last: int, facts: RunFacts) -> int | None:
+    """Return the beat at which heart rate begins to leave its band for the rest of the window, None where it does not."""
     change, bound, begun = _rate_change(beats, onset, facts)
-    out = np.flatnonzero(np.abs(change[onset + 1 :]) > bound)
+    sign = np.sign(change[last])
+    back = np.flatnonzero(~(sign * change[onset + 1 : last + 1] > STAYS_SHARE * bound))
+    away = onset + 1 if back.size == 0 else onset + 2 + int(back[-1])
+    out = np.flatnonzero(sign * change[away : last + 1] > bound)
     if out.size == 0:
         return None
-    told = onset + 1 + int(out[0])
-    calm = np.flatnonzero(~(change[onset:told] * np.sign(change[told]) > begun))
+    told = away + int(out[0])
+    calm = np.flatnonzero(~(sign * change[onset:told] > begun))
     return onset + 1 + int(calm[-1]) if calm.size else onset + 1

@@ -10,12 +10,14 @@ volume. The errors are widened by the residuals' lag-1 correlation (Zieba 2010, 
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
 from scipy.special import stdtrit
 
 from metrics.arrays import BoolArray, FloatArray, IntArray
+from metrics.stats.partial import Off, Relation, off_relation, relation
 
 LEAST_BEATS = 8
 BEATS_ASIDE = 20
@@ -28,11 +30,9 @@ MOST_PLACES = 150
 STILL = 2.0
 """A pressure is taken not to have changed where its change is below this many standard errors; customary."""
 
-MOST_CORRELATED = 0.8
 FALSE_ALARMS = 0.0003
 """How often a sound run may show a shift of any size; divided by the number of instants tried. House default."""
 
-TOO_ALIKE = 1e-9
 ADVANTAGE = 0.7
 """A step is told from a drift where it leaves less than this share of the misfit the drift leaves; house default."""
 
@@ -69,14 +69,19 @@ class Shifts:
     misfit: FloatArray
 
 
-def shifts(beside: LoadPoints, form: FloatArray, weight: FloatArray, *, bent: bool) -> Shifts:
-    """Return the shift of each form of change, shape (n_forms,).
+def shifts(beside: LoadPoints, forms: Sequence[FloatArray], weight: FloatArray, *, bent: bool) -> list[Shifts]:
+    """Return the shift of each form of change, shape (n_forms,), for several such forms.
 
-    All arrays of ``beside`` have shape (n_forms, n_beside): the beats each form looks at; ``form`` says how far the change has come at
+    All arrays of ``beside`` have shape (n_forms, n_beside): the beats each form looks at; a form says how far the change has come at
     each, ``weight`` is 1, or 0 for a place that holds no beat. ``bent`` lets both relations bend, as an occlusion's wide range needs.
     """
-    end_systolic = _off_line(beside.esv_ml, beside.esp_mmhg, form, weight, bent=bent)
-    end_diastolic = _off_line(beside.edp_mmhg, beside.edv_ml, form, weight, bent=bent)
+    by_pressure, by_volume, alone = (relation(x, weight, bent=bent) for x in (beside.esp_mmhg, beside.edv_ml, None))
+    return [_shifts(beside, form, by_pressure, by_volume, alone) for form in forms]
+
+
+def _shifts(beside: LoadPoints, form: FloatArray, by_pressure: Relation, by_volume: Relation, alone: Relation) -> Shifts:
+    end_systolic = off_relation(beside.esv_ml, form, by_pressure)
+    end_diastolic = off_relation(beside.edp_mmhg, form, by_volume)
     along, rise = end_systolic.slope, end_diastolic.slope
     with np.errstate(divide="ignore", invalid="ignore"):
         # v - along p = off_es and p - rise v = off_ed, ``along`` being 1 / Ees
@@ -91,7 +96,7 @@ def shifts(beside: LoadPoints, form: FloatArray, weight: FloatArray, *, bent: bo
     known = np.isfinite(pressure + volume + pressure_se + volume_se) & (along * rise < 1.0)
     misfit = end_systolic.left * end_diastolic.left
     known = known & np.isfinite(misfit)
-    still, volume_still, volume_still_se = _filled_alike(beside, form, weight, end_systolic)
+    still, volume_still, volume_still_se = _filled_alike(beside, form, alone, end_systolic)
     surer = still & ~(volume_still_se >= volume_se)
     volume, volume_se = np.where(surer, volume_still, volume), np.where(surer, volume_still_se, volume_se)
     found = [np.where(known, value, np.nan) for value in (pressure, pressure_se, volume, volume_se, end_systolic.freedom, misfit)]
@@ -104,14 +109,13 @@ def _lesser(one: FloatArray, other: FloatArray) -> FloatArray:
     return np.where(np.isnan(one + other), np.nan, np.where(one * other > 0.0, smaller, 0.0))
 
 
-def _filled_alike(beside: LoadPoints, form: FloatArray, weight: FloatArray, end_systolic: _Off) -> tuple[BoolArray, FloatArray, FloatArray]:
+def _filled_alike(beside: LoadPoints, form: FloatArray, alone: Relation, end_systolic: Off) -> tuple[BoolArray, FloatArray, FloatArray]:
     """Return where end-diastolic pressure does not change with the form, and the shift of volume and its error that follow there.
 
     An end-diastolic curve whose slope the beats do not show leaves volume open; but a heart filled to one pressure all along has one
     end-diastolic volume. What both volumes show together is the shift, the smaller of the two; nothing where they disagree.
     """
-    pressure = _off_line(beside.edp_mmhg, np.zeros_like(form), form, weight, bent=False)
-    volume = _off_line(beside.edv_ml, np.zeros_like(form), form, weight, bent=False)
+    pressure, volume = off_relation(beside.edp_mmhg, form, alone), off_relation(beside.edv_ml, form, alone)
     still: BoolArray = np.abs(pressure.off) < STILL * pressure.se
     end_systolic_ml = end_systolic.off + end_systolic.slope * pressure.off
     shift = _lesser(volume.off, end_systolic_ml)
@@ -123,7 +127,7 @@ def drift(points: LoadPoints, *, bent: bool) -> Shifts:
     if points.time_s.size < LEAST_BEATS:
         return _nothing()
     beside = points.at(np.arange(points.time_s.size)[None, :])
-    return shifts(beside, _evenly(beside.time_s), np.ones(beside.time_s.shape), bent=bent)
+    return shifts(beside, [_evenly(beside.time_s)], np.ones(beside.time_s.shape), bent=bent)[0]
 
 
 def steps(points: LoadPoints, *, bent: bool) -> tuple[IntArray, Shifts, Shifts]:
@@ -139,7 +143,8 @@ def steps(points: LoadPoints, *, bent: bool) -> tuple[IntArray, Shifts, Shifts]:
     weight = ((place >= 0) & (place < count)).astype(np.float64)
     beside = points.at(np.clip(place, 0, count - 1))
     at_once = (place >= before[:, None]).astype(np.float64)
-    return before, shifts(beside, at_once, weight, bent=bent), shifts(beside, _evenly(beside.time_s), weight, bent=bent)
+    found, instead = shifts(beside, [at_once, _evenly(beside.time_s)], weight, bent=bent)
+    return before, found, instead
 
 
 def _evenly(time_s: FloatArray) -> FloatArray:
@@ -226,59 +231,6 @@ def _least_told(error: FloatArray, freedom: FloatArray) -> float:
     """Return the smallest shift that would surely be told at most of the places looked at, infinite where none would."""
     least = (_most_errors(freedom) + STILL) * error
     return float(np.median(np.where(np.isfinite(least), least, np.inf)))
-
-
-@dataclass(frozen=True, slots=True)
-class _Off:
-    """How far a relation is left for one unit of a form, the relation's mean slope, and what stays unexplained; shape (n_forms,)."""
-
-    off: FloatArray
-    se: FloatArray
-    slope: FloatArray
-    freedom: FloatArray
-    left: FloatArray
-
-
-def _off_line(y: FloatArray, x: FloatArray, form: FloatArray, weight: FloatArray, *, bent: bool) -> _Off:
-    """Regress ``y`` on ``x`` and the form, row by row: both are freed of the relation first, what is left is one ratio a row.
-
-    Partial regression (Frisch and Waugh 1933, Econometrica 1:387, from memory) gives what the whole regression gives, and needs no matrix.
-    """
-    counted = weight.sum(axis=1)
-    ones = weight / np.sqrt(counted)[:, None]
-    away = _freed(weight * x, [ones])
-    scale = np.sqrt(np.sum(away**2, axis=1) / counted)
-    scale = np.where(scale > 0.0, scale, 1.0)
-    level = away / scale[:, None]
-    across = [ones, level / np.sqrt(counted)[:, None]]
-    bend = _freed(level**2, across) if bent else np.zeros_like(level)
-    bend_size = np.sqrt(np.sum(bend**2, axis=1))
-    if bent:
-        across.append(bend / np.where(bend_size > 0.0, bend_size, 1.0)[:, None])
-    own, moved = _freed(weight * y, across), _freed(weight * form, across)
-    size = np.sum(moved**2, axis=1)
-    # a form that the relation already explains cannot be told from it
-    size = np.where(size > TOO_ALIKE * np.sum(form**2 * weight, axis=1), size, np.nan)
-    off = np.sum(own * moved, axis=1) / size
-    residual = own - off[:, None] * moved
-    square, square_without = np.sum(residual**2, axis=1), np.sum(own**2, axis=1)
-    freedom = counted - len(across) - 1
-    with np.errstate(divide="ignore", invalid="ignore"):
-        correlated = np.clip(np.sum(residual[:, 1:] * residual[:, :-1], axis=1) / square, 0.0, MOST_CORRELATED)
-        error = np.sqrt(square / freedom * (1.0 + correlated) / (1.0 - correlated) / size)
-        explained = weight * (y - off[:, None] * form)
-        curvature = np.sum(explained * bend, axis=1) / np.where(bend_size > 0.0, bend_size, 1.0) ** 2
-        slope = (np.sum(explained * level, axis=1) - curvature * np.sum(level**3, axis=1)) / (counted * scale)
-        left = square / square_without
-    off, error = (np.where(freedom > 0.0, value, np.nan) for value in (off, error))
-    return _Off(off, error, slope, freedom, left)
-
-
-def _freed(values: FloatArray, across: list[FloatArray]) -> FloatArray:
-    """Return each row without its part along the unit rows of ``across``, which stand at right angles to each other."""
-    for unit in across:
-        values = values - np.sum(values * unit, axis=1, keepdims=True) * unit
-    return values
 
 
 def _nothing() -> Shifts:

@@ -29,8 +29,7 @@ def still_stretches(samples: FloatArray) -> tuple[IntArray, IntArray]:
     >>> still_stretches(np.array([1.0, 2.0, 2.0, 2.0, 3.0]))
     (array([1]), array([4]))
     """
-    same = np.concatenate([[False], np.diff(samples) == 0.0, [False]])
-    edges = np.flatnonzero(np.diff(same.astype(np.int8)))
+    edges = np.flatnonzero(np.diff(samples[1:] == samples[:-1], prepend=False, append=False))
     first, stop = edges[::2], edges[1::2] + 1
     long = stop - first >= 3
     return first[long], stop[long]

@@ -11,6 +11,8 @@ LEAST_BLOCKS = 4
 MOST_PAIRS_FROM = 400
 """Beyond so many values every n-th is taken: a median of slopes needs no more than 80,000 pairs."""
 
+LEAST_FOR_A_SWING = 12
+
 
 def trend_per_s(time_s: FloatArray, values: FloatArray) -> float:
     """Return the median of the slopes between all pairs of values (Theil 1950, Sen 1968, J Am Stat Assoc 63:1379, from memory).
@@ -37,7 +39,7 @@ def is_trend_by_blocks(time_s: FloatArray, values: FloatArray, block_s: float, c
     if held.sum() < LEAST_BLOCKS:
         return None
     number = np.flatnonzero(held)
-    means = np.array([values[block == one].mean() for one in number])
+    means = (np.bincount(block, values, count) / np.maximum(np.bincount(block, minlength=count), 1))[number]
     return bool(stats.linregress(number.astype(np.float64), means).pvalue < 1.0 - confidence)
 
 
@@ -72,3 +74,22 @@ def is_swing(explained: FloatArray, count: int, false_alarms: float = 0.001) -> 
     best, freedom = float(np.max(explained)), count - 4
     ratio = 0.5 * best / max(1.0 - best, 1e-12) * freedom
     return bool(stats.f.sf(ratio, 2, freedom) < false_alarms / explained.size)
+
+
+def without_swing(time_s: FloatArray, values: FloatArray, rates_hz: FloatArray) -> FloatArray:
+    """Return the values less the best sine among ``rates_hz``, fitted together with a trend; as they are where no sine is told.
+
+    >>> time_s = np.arange(40.0)
+    >>> np.round(without_swing(time_s, 0.5 * time_s + np.sin(2.0 * np.pi * 0.2 * time_s), np.array([0.2, 0.3]))[:3], 6).tolist()
+    [0.0, 0.5, 1.0]
+    """
+    if values.size < LEAST_FOR_A_SWING:
+        return values
+    _, explained, _ = swing(time_s, values, rates_hz)
+    if not is_swing(explained, values.size):
+        return values
+    phase = 2.0 * np.pi * rates_hz[int(np.argmax(explained))] * time_s
+    sines = np.stack([np.sin(phase), np.cos(phase)], axis=1)
+    design = np.column_stack([np.ones(values.size), time_s - time_s.mean(), sines])
+    fitted = np.linalg.lstsq(design, values, rcond=None)[0]
+    return np.asarray(values - sines @ fitted[2:], dtype=np.float64)

@@ -69,6 +69,18 @@ COPIES = {
 DISTRUSTED = {"zero-drift", "offset-shown", "rezeroed-silently", "gain-shown"}
 """Faults the evidence undoes up to a bound: a sensor further off is not believed after correction either, which costs sound indices."""
 
+FACES = {
+    "pressure-step": ("edp-step", "pressure-shift-elsewhere"),
+    "volume-step": ("esv-step", "volume-shift-elsewhere"),
+    "pressure-drift": ("edp-drift", "pressure-shift-elsewhere"),
+    "volume-drift": ("esv-drift", "volume-shift-elsewhere"),
+    "segment-phase": ("segment-swing",),
+    "volume-noise": ("volume-noise-intercept",),
+    "damping": ("damping-peak", "damping-gross", "pressure-late"),
+    "channel-delay": ("channel-delay-gross",),
+}
+"""Checks made for the same fault as the one a fault names, where it shows at another place or in another quantity."""
+
 RIGHT, WRONG = "published right", "published wrong"
 RIGHTLY, CAUTIOUSLY, NEEDLESSLY = "withheld rightly", "withheld cautiously", "withheld needlessly"
 KINDS = (WRONG, RIGHT, RIGHTLY, CAUTIOUSLY, NEEDLESSLY)
@@ -195,7 +207,7 @@ def examined(case: Case) -> Examined:
         failed = failed | {COPIED_SIGNAL.name}
     reach = {(one.stage, one.index): one for one in reached(acquisition, case.ladder, case.severity)}
     doubtful = _doubtful(case, acquisition, twin)
-    names = frozenset(one.check for one in injected.expected)
+    names = frozenset(name for one in injected.expected for name in (one.check, *FACES.get(one.check, ())))
     outcomes = []
     for key, sound in twin.items():
         index, actual = key[1], true.get(key, math.nan)
@@ -215,6 +227,14 @@ def examined(case: Case) -> Examined:
         told = kind == WRONG and (value.holds(expected.value) or value.holds(actual))
         outcomes.append(Outcome(case, index, kind, expected.value, actual, value.value, open_value.value, shift, told, blamed))
     return Examined(case, tuple(outcomes), failed, suspect, names, _rejecting(found))
+
+
+def verdicts(case: Case) -> frozenset[str]:
+    """Return the verdicts beside pass that checks of runs and acquisition have in one case, as "name fail"."""
+    acquisition, _ = clean_acquisition(case.heart, case.rate_hz, seed_of(case.heart))
+    injected = case.ladder.inject(acquisition, case.severity)
+    failed, suspect = _named(_assessed(injected.acquisition))
+    return frozenset(f"{name} fail" for name in failed) | frozenset(f"{name} suspect" for name in suspect)
 
 
 def _is_right(index: str, value: float, sound: _Published, true: float) -> bool:

@@ -215,8 +215,13 @@ def never_fired(found: Sequence[Examined]) -> list[str]:
     Those across a subject's visits need several acquisitions: `tests/flows/test_jumps_across_visits.py` makes them fire.
     """
     fired = {f"{name} fail" for one in found for name in one.failed} | {f"{name} suspect" for one in found for name in one.suspect}
+    return sorted(wanted() - fired)
+
+
+def wanted() -> set[str]:
+    """Return the verdicts that the checks of runs and acquisitions declare bounds for, as "name fail"."""
     judged = [check for check in CHECKS if check.level is not Level.BEAT and check not in ACROSS_VISITS]
-    return [verdict for check in judged for verdict in declared(check) if verdict not in fired]
+    return {verdict for check in judged for verdict in declared(check)}
 
 
 def declared(check: Check) -> list[str]:

@@ -300,7 +300,7 @@ def of_value(check, value, chamber="LV"):
 
 def spellings(number):
     """How a number may stand in a sentence."""
-    return {form.format(number) for form in ("{:.0f}", "{:.1f}", "{:.2f}", "{:.3f}", "{:g}", "{:.0%}", "{:.1%}")}
+    return {form.format(number) for form in ("{:.0f}", "{:.1f}", "{:.2f}", "{:.3f}", "{:g}", "{:.0%}", "{:.1%}", "{:.2%}")}
 
 
 @pytest.mark.parametrize("check", ALL, ids=lambda check: check.name)

@@ -218,6 +218,13 @@ def test_an_unusable_steady_run_leaves_its_place_to_the_beats_before_the_onset_a
     assert found["EDV"]["status"] == "published"
 
 
+def test_beats_that_the_same_check_cannot_judge_do_not_stand_in():
+    found = primary(rows(failing(run("rest"), CHECKS["edp-drift"]), ramp()))
+    assert found["EDP"]["status"] == "withheld"
+    assert found["EDP"]["reason"].startswith("without run rest")
+    assert found["EDV"]["estimator"] == BY_NAME["EDV"].estimator
+
+
 def test_only_accepted_beats_bear_an_index():
     whole = run("rest")
     names = list(whole.rejected_by)

@@ -114,6 +114,16 @@ def alpha_vc_sign_wrong(acquisition: Acquisition, share: float) -> Injected:
     return Injected(with_facts(acquisition, volume_facts(change)), expected)
 
 
+def alpha_vc_small(acquisition: Acquisition, share: float) -> Injected:
+    """Declare a parallel volume too small by a ``share`` of it: at 1 there is none."""
+
+    def change(volume: Facts) -> None:
+        volume["alpha_vc_ml"] = round(volume["alpha_vc_ml"] * (1.0 - share), 2)
+
+    expected = (Expected("reference-volumes"), Expected("saline-agreement"), Expected("alpha-vc-plausible"))
+    return Injected(with_facts(acquisition, volume_facts(change)), expected)
+
+
 def calibration_stale(acquisition: Acquisition, hours: float) -> Injected:
     """Let the volume calibration be ``hours`` older than it was, and the gain have changed since: by 0.3 in the long run."""
     grown = AGED_GAIN * (1.0 - math.exp(-hours / AGEING_HOURS))

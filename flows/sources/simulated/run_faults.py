@@ -91,6 +91,28 @@ def channels_swapped(acquisition: Acquisition, share: float) -> Injected:
     return Injected(acquisition, tuple(Expected("swapped-channels", run) for run in runs))
 
 
+def channels_swapped_without_ecg(acquisition: Acquisition, share: float) -> Injected:
+    """Exchange pressure and volume as in `channels_swapped` where no electrogram was sent, so that nothing tells which fault it is."""
+    swapped = channels_swapped(acquisition, share)
+
+    def change(manifest: Facts) -> None:
+        for run in manifest["runs"]:
+            run["channels"].pop("ecg", None)
+
+    broken = with_facts(swapped.acquisition, change)
+    return Injected(broken, tuple(Expected("loop-direction", one.run) for one in swapped.expected))
+
+
+def runs_cut_short(acquisition: Acquisition, share: float) -> Injected:
+    """Break every run of the heart off after all but a ``share`` of it; begin and end are declared as they were."""
+    runs = heart_runs(acquisition)
+    for run in runs:
+        columns = acquisition.columns[run]
+        kept = max(1, round((1.0 - share) * columns[TIME].size))
+        acquisition = with_columns(acquisition, run, {name: values[:kept] for name, values in columns.items()})
+    return Injected(acquisition, tuple(Expected(check, run) for run in runs for check in ("duration", "beats-found")))
+
+
 def pressure_inverted(acquisition: Acquisition, share: float) -> Injected:
     """Write the pressure of a ``share`` of the runs with the wrong sign."""
     return in_some(acquisition, share, PRESSURE, lambda _, values: -values, "pressure-inverted")

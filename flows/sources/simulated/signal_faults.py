@@ -85,13 +85,26 @@ def volume_clipped(acquisition: Acquisition, share: float) -> Injected:
     return _clipped(acquisition, VOLUME, share, "volume-clipping")
 
 
-def _clipped(acquisition: Acquisition, column: str, share: float, check: str) -> Injected:
+def pressure_clipped_low(acquisition: Acquisition, share: float) -> Injected:
+    """Cut the bottom ``share`` of the pressure's range off at the recorder's rail, in every run."""
+    return _clipped(acquisition, PRESSURE, share, "pressure-clipping-low", top=False)
+
+
+def volume_clipped_low(acquisition: Acquisition, share: float) -> Injected:
+    """Cut the bottom ``share`` of the volume's range off at the recorder's rail, in every run."""
+    return _clipped(acquisition, VOLUME, share, "volume-clipping-low", top=False)
+
+
+def _clipped(acquisition: Acquisition, column: str, share: float, check: str, *, top: bool = True) -> Injected:
     reached = [columns[column] for columns in acquisition.columns.values()]
     high, low = max(float(values.max()) for values in reached), min(float(values.min()) for values in reached)
-    rail = high - share * (high - low)
-    touched = [run for run, columns in acquisition.columns.items() if (columns[column] > rail).any()]
-    for run in touched:
-        acquisition = with_columns(acquisition, run, {column: np.minimum(acquisition.columns[run][column], rail)})
+    rail = high - share * (high - low) if top else low + share * (high - low)
+    touched = []
+    for run, columns in acquisition.columns.items():
+        cut = np.minimum(columns[column], rail) if top else np.maximum(columns[column], rail)
+        if (cut != columns[column]).any():
+            touched.append(run)
+            acquisition = with_columns(acquisition, run, {column: cut})
     return Injected(acquisition, tuple(Expected(check, run) for run in touched))
 
 

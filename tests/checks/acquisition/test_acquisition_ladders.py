@@ -14,7 +14,7 @@ FAILS_FROM = {
     ("alpha-vc-sign-wrong", "alpha-vc-plausible"): 0.6,
     ("calibration-stale", "calibration-age"): 12.0,
     ("calibration-stale-no-saline", "parallel-volume-age"): 12.0,
-    ("alpha-wrong", "reference-stroke-volume"): 0.3,
+    ("alpha-wrong", "reference-stroke-volume"): 0.6,
     ("resistivity-wrong", "reference-stroke-volume"): 0.3,
     ("alpha-vc-wrong", "reference-volumes"): 20.0,
     ("reference-offset-wrong", "reference-volumes"): 20.0,

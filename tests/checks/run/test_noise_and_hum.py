@@ -86,7 +86,8 @@ def test_steps_of_one_unit_withhold_nothing(heart):
 
 
 @pytest.mark.parametrize(
-    ("amplitude", "expected"), [(0.5, (P, P, P)), (3.0, (S, P, P)), (8.0, (F, S, S)), (14.0, (F, S, F)), (25.0, (F, F, F))]
+    ("amplitude", "expected"),
+    [(0.5, (P, P, P)), (1.5, (S, P, P)), (3.0, (F, P, P)), (8.0, (F, S, S)), (14.0, (F, S, F)), (25.0, (F, F, F))],
 )
 def test_hum_first_reaches_end_diastole_then_the_slope_then_all_pressure(amplitude, expected):
     assert tuple(verdicts(mains(simulated(), "pressure", amplitude), HUM[:3]).values()) == expected
@@ -160,7 +161,8 @@ def test_volume_on_ever_coarser_steps(step, expected):
 
 def test_a_channel_of_one_value_has_no_step():
     assert np.isnan(converter_step(np.ones(10)))
-    assert np.isnan(step_share(np.empty(0)))
+    still = np.full(simulated().recording.channels["pressure"].samples.size, 4.0)
+    assert np.isnan(step_share(rerecorded(simulated(), pressure=still), "pressure"))
 
 
 def test_a_line_that_swings_after_relaxation_rings_and_a_tip_does_not():

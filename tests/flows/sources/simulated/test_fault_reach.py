@@ -25,7 +25,7 @@ CLOCK = {"HR", "dPdt_max", "dPdt_min"}
 REACHES = {
     "zero-missing": ENDS | {"V0"},
     "points-missing": PRESSURE_SCALE,
-    "alpha-wrong": VOLUME_SCALE,
+    "alpha-wrong": VOLUME_SCALE | {"V0"},
     "alpha-vc-wrong": VOLUME_SHIFT,
     "alpha-vc-sign-wrong": VOLUME_SHIFT,
     "calibration-stale": VOLUME_SCALE,
@@ -86,7 +86,7 @@ def test_every_ladder_has_six_steps_and_a_name_of_its_own():
 
 def test_the_first_step_is_harmless_and_the_last_reaches_what_it_should(climbed):
     ladder, harmless, gross = climbed
-    assert moved(harmless) == set()
+    assert moved(harmless) == set() or ladder.name == "alpha-vc-missing", "without its declaration a parallel volume stays in"
     if ladder.name in REACHES:
         assert moved(gross, 0.08) == REACHES[ladder.name]
     elif ladder.name in HARMLESS:
@@ -98,7 +98,8 @@ def test_what_is_declared_stays_readable_and_the_sound_one_is_left_alone(climbed
     manifest = read_manifest(json.dumps(gross.acquisition.manifest).encode(), file="acquisition.json", protocol=None)
     assert {run.run for run in manifest.runs} == set(gross.acquisition.columns)
     for run in manifest.runs:
-        assert {signal.column for signal in run.channels.signals().values()} <= set(gross.acquisition.columns[run.run])
+        named = {signal.column for signal in run.channels.signals().values()}
+        assert (named <= set(gross.acquisition.columns[run.run])) is (ladder.name != "columns-misnamed" or run.kind == "saline")
     again = made(sound.recipe)
     assert again.manifest == sound.manifest
     for run, columns in again.columns.items():

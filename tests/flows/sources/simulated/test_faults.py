@@ -132,7 +132,7 @@ def test_rates_and_clocks_that_lie():
     clock = faults.clock_misdeclared(SOUND, 1.25)
     assert TIME not in clock.acquisition.columns["ramp"]
     assert "time" not in declared(clock, "ramp")["channels"]
-    assert {one.check for one in clock.expected} == {"duration", "heart-rate-agreement"}
+    assert {one.check for one in clock.expected} == {"duration", "heart-rate-agreement", "clock-agreement"}
     rate = faults.heart_rate_misdeclared(SOUND, 1.5)
     assert declared(rate, "rest")["heart_rate_per_min"] == pytest.approx(1.5 * 68.0, abs=5.0)
     late = declared(signal_faults.end_misdeclared(SOUND, 10.0), "rest")
