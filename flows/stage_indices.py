@@ -14,6 +14,7 @@ from functools import reduce
 import numpy as np
 
 from checks.check import Check, Verdict
+from checks.subject import REGURGITATION
 from checks.verdicts import RunVerdict, spoilers
 from metrics.arrays import BoolArray
 from metrics.indices import ALL
@@ -25,6 +26,7 @@ from metrics.signals.uncertainty import CalibrationUncertainty, calibration_unce
 
 PRE_ONSET = "pre-onset"
 PUBLISHED, WITHHELD = "published", "withheld"
+LEAKING = "with a valve declared to leak no part of the beat is isovolumic"
 IndexRow = dict[str, object]
 
 
@@ -51,6 +53,11 @@ class Stage:
     def chamber(self) -> str:
         """Return the chamber the stage's runs were recorded in."""
         return self.runs[0].subject.facts.chamber if self.runs else "LV"
+
+    @property
+    def conditions(self) -> frozenset[str]:
+        """Return the conditions declared of the acquisition."""
+        return self.runs[0].subject.facts.conditions if self.runs else frozenset()
 
     def of_kind(self, kind: str) -> tuple[RunVerdict, ...]:
         """Return the stage's runs of one kind."""
@@ -120,11 +127,13 @@ def _values_of(index: Index, stage: Stage, v0_ml: float | None) -> list[StageVal
             for run in preload
             if run not in chief
         ]
-    values = [_value(index, beats, _uncertainty(stage, index, beats), run=None, spoiled=bool(spoiled), why=why)]
+    is_leaking = index.isovolumic and bool(stage.conditions & REGURGITATION)
+    spoils = [stage.reasons[check.name] for check in spoiled] + ([LEAKING] if is_leaking else [])
+    why += [LEAKING] if is_leaking else []
+    values = [_value(index, beats, _uncertainty(stage, index, beats), run=None, spoiled=bool(spoils), why=why)]
     for run in steady if index.source is Source.STEADY else preload:
         alone = replace(beats, steady=(run,)) if index.source is Source.STEADY else replace(beats, preload=(run,))
-        alone_why = [stage.reasons[check.name] for check in spoiled]
-        values.append(_value(index, alone, _uncertainty(stage, index, alone), run=run.run, spoiled=bool(spoiled), why=alone_why))
+        values.append(_value(index, alone, _uncertainty(stage, index, alone), run=run.run, spoiled=bool(spoils), why=list(spoils)))
     return values
 
 

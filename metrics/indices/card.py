@@ -145,7 +145,7 @@ class Index:
     ``unit`` is UCUM. ``estimator`` tells kinds apart that must never be mixed, one of them is ``primary``; ``needs`` says in words what
     it is made of; ``sensitivity`` how errors of the calibration move it. ``chamber`` is the only one it is defined for; ``rests_on``
     are indices whose faults reach this estimator too, beside those of its own name. One ``by_body_surface`` is published only where a
-    body surface area is declared.
+    body surface area is declared, an ``isovolumic`` one only where no valve is declared to leak.
     """
 
     name: str
@@ -161,6 +161,7 @@ class Index:
     chamber: str | None = None
     rests_on: frozenset[str] = frozenset()
     by_body_surface: bool = False
+    isovolumic: bool = False
 
     @property
     def exposed(self) -> frozenset[str]:

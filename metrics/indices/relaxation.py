@@ -7,8 +7,8 @@ zero asymptote of Weiss 1976, J Clin Invest 58:751 (formula read), ln P against 
 what it was (read), over ln 2 so that it too is a time constant (derived; true for a zero asymptote only). On exact data of one kind the
 others differ by 10 to 50 %, and trends may be opposite (Langer 2005, Physiol Res 54:601, read).
 
-A zero-phase filter leaves an exponential what it is and touches its ends alone: at most 1.4 % of a tau of 35 ms at 250 Hz, and 4 % where the
-fall begins with a kink (computed).
+A zero-phase filter leaves an exponential what it is and touches its ends alone: at most 1.4 % of a tau of 35 ms at 250 Hz, and 4 % where
+the fall begins with a kink (computed).
 """
 
 from __future__ import annotations

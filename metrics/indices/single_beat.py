@@ -184,6 +184,7 @@ def _elastance_of(chamber: str) -> Index:
         sensitivity=powers(pressure_gain=1.0, volume_gain=-1.0),
         primary=False,
         chamber=chamber,
+        isovolumic=True,
         rests_on=_SHAPE | {"SV"},
     )
 
@@ -200,6 +201,7 @@ def _intercept_of(chamber: str) -> Index:
         sensitivity=_intercept_sensitivity,
         primary=False,
         chamber=chamber,
+        isovolumic=True,
         rests_on=_SHAPE | {"SV", "EDV"},
     )
 
@@ -216,6 +218,7 @@ def _coupling_of(chamber: str) -> Index:
         sensitivity=_coupling_sensitivity,
         primary=False,
         chamber=chamber,
+        isovolumic=True,
         rests_on=_SHAPE,
     )
 

@@ -218,6 +218,16 @@ def test_an_unusable_steady_run_leaves_its_place_to_the_beats_before_the_onset_a
     assert found["EDV"]["status"] == "published"
 
 
+def test_what_needs_shut_valves_is_withheld_where_one_is_declared_to_leak():
+    rest = run("rest")
+    leaking = replace(
+        rest, subject=replace(rest.subject, facts=replace(rest.subject.facts, conditions=frozenset({"mitral-regurgitation"})))
+    )
+    for verdict, status in ((rest, "published"), (leaking, "withheld")):
+        told = {row["status"] for row in every_row(verdict, ramp()) if row["estimator"] == "single-beat:takeuchi"}
+        assert told == {status}
+
+
 def test_beats_that_the_same_check_cannot_judge_do_not_stand_in():
     found = primary(rows(failing(run("rest"), CHECKS["edp-drift"]), ramp()))
     assert found["EDP"]["status"] == "withheld"
