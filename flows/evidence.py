@@ -46,7 +46,7 @@ def evidence_of(
     beats: Sequence[Row],
     indices: Sequence[Row],
 ) -> dict[str, object]:
-    """Return the evidence of one acquisition: its facts, each run's drawings, the findings worst first, the primary indices."""
+    """Return the evidence of one acquisition: its facts, each run's drawings, the findings worst first, the indices of whole stages."""
     return {
         "acquisition": {
             "site": manifest.site,

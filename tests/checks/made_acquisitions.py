@@ -31,6 +31,10 @@ RUNS = (
 UNITS = {"pressure": "mm[Hg]", "volume": "mL", "ecg": "mV", "aortic_pressure": "mm[Hg]"}
 OWN_LIMITS = Rules({})
 
+MAY_BE_OUT_OF_REACH = frozenset({"V100", "V120", "V20", "V30", "EDPVR_beta", "EDPVR_stiffness", "dPdt_max_EDV", "tau", "Pinf"})
+"""Indices that a sound recording may not show: no curve is read far beyond its points, and a fall too short for a curve, or a slope not
+told from none, is withheld for what it is."""
+
 
 @functools.cache
 def sound(heart="normal", runs=RUNS):

@@ -11,6 +11,7 @@ import pytest
 
 from flows.nightly import run_night_plain
 from flows.sources.simulated.study import make_study
+from tests.checks.made_acquisitions import MAY_BE_OUT_OF_REACH
 
 GOOD = "H-004-visit-1"
 
@@ -203,7 +204,7 @@ def test_the_good_package_is_published_and_every_upload_has_one_row(after_the_ni
     assert len(packages) == len(SHAPES) + 2
     assert packages["package"].is_unique
     good = indices[(indices["acquisition"] == GOOD) & indices["primary"]]
-    assert (good["status"] == "published").all()
+    assert set(good[good["status"] != "published"]["index"]) <= MAY_BE_OUT_OF_REACH
     assert before
     assert result.release
 
@@ -220,8 +221,9 @@ def test_what_a_missing_part_costs_is_withheld_and_the_rest_published(after_the_
     assert primary["no-preload", "SW"] == primary["no-preload", "HR"] == "published"
     assert primary["no-zeros", "EDP"] == primary["no-zeros", "V0"] == "withheld"
     assert primary["no-zeros", "Ees"] == primary["no-zeros", "SW"] == "published"
-    assert (primary["no-ecg"] == "published").all()
-    assert (primary["no-reference"] == "published").all()
+    for name in ("no-ecg", "no-reference"):
+        statuses = primary[name]
+        assert set(statuses[statuses != "published"].index) <= MAY_BE_OUT_OF_REACH
 
 
 def test_a_rejected_package_publishes_nothing(after_the_night):

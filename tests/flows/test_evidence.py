@@ -118,8 +118,9 @@ def test_what_was_found_is_told_once_a_check_and_run_fails_first(found):
     assert len(keys) == len(set(keys))
 
 
-def test_only_primary_indices_are_drawn(found):
-    assert [row["index"] for row in found.evidence["indices"]] == [row["index"] for row in found.indices if row["primary"]]
+def test_the_indices_of_whole_stages_are_kept_each_estimator_beside_the_primary_one(found):
+    assert found.evidence["indices"] == [row for row in found.indices if row["run"] is None]
+    assert {row["index"] for row in found.evidence["indices"] if row["primary"]} == {row["index"] for row in found.indices}
 
 
 def test_seven_hundred_beats_keep_the_evidence_bounded(long):
